@@ -234,6 +234,8 @@ def test_a_changed_copy_is_validated_too() -> None:
         replace(target, bandwidth=130e3)
     with pytest.raises(SpecError, match=r"^target\.center_frequency = nan: must be a finite number"):
         replace(target, center_frequency=float("nan"))
+    with pytest.raises(SpecError, match=r'^sensor\.input_unit = "A\\n\.end": .*name the unit of the sensor'):
+        replace(parse_spec(MINIMAL).sensor, input_unit="A\n.end")
     with pytest.raises(SpecError, match=r"^target\.yield = 1\.5: must be above 0 % and below 100 %"):
         replace(target, required_yield=1.5)
 

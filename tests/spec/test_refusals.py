@@ -347,7 +347,7 @@ def test_files_that_are_no_spec(tmp_path: Path) -> None:
         load_spec(path)
     with pytest.raises(SpecError, match="is not a regular file"):
         load_spec("/dev/null")
-    with pytest.raises(SpecError, match="cannot be read .*name too long"):
+    with pytest.raises(SpecError, match=r"cannot be read .*name too long"):
         load_spec("x" * 5000)
     with pytest.raises(SpecError, match="no such file"):
         load_spec("a\0b")
@@ -402,3 +402,14 @@ def test_rolloff_tables(tmp_path: Path, content: str | None, match: str) -> None
     text = in_sensor('rolloff = [ { kind = "table", file = "coil.csv" } ]')
     with pytest.raises(SpecError, match=rf'line 11: sensor\.rolloff\[1\]\.file = "coil\.csv": .*{match}'):
         parse_spec(text, folder=tmp_path)
+
+
+def test_a_file_that_breaks_off_while_it_is_read(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def broken(_path: Path) -> bytes:
+        raise OSError(5, "Input/output error")
+
+    path = tmp_path / "spec.toml"
+    path.write_text(MINIMAL)
+    monkeypatch.setattr(Path, "read_bytes", broken)
+    with pytest.raises(SpecError, match=r"spec\.toml: cannot be read \(Input/output error\)"):
+        load_spec(path)
