@@ -1,0 +1,279 @@
+"""The verbs: load a spec, design a chain for it, write and load a design, check it."""
+
+from __future__ import annotations
+
+import hashlib
+import logging
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from synth import circuit, folder
+from synth.errors import SpecError
+from synth.model.chain import Chain
+from synth.model.judgement import Requirement, Verification
+from synth.model.record import DesignRecord
+from synth.parts.op_amps import load_op_amps, select
+from synth.parts.passives import capacitor_stock, coupling_stock, resistor_stock
+from synth.planning import plan
+from synth.spec import Spec, load_spec, parse_spec, spec_to_dict, starter_spec
+from synth.topology.place import Stocks
+from synth.verification import verify
+
+if TYPE_CHECKING:
+    import control
+
+log = logging.getLogger(__name__)
+FloatArray = NDArray[np.float64]
+ComplexArray = NDArray[np.complex128]
+
+
+@dataclass(frozen=True, slots=True)
+class Design:
+    """A designed chain with its verdict; computes its figures from the exact circuit on request.
+
+    Attributes:
+        record: all of it as data.
+        edited: True when parts were changed by hand since the tool wrote them.
+    """
+
+    record: DesignRecord
+    edited: bool = False
+
+    @property
+    def spec(self) -> Spec:
+        """What was asked."""
+        return self.record.spec
+
+    @property
+    def chain(self) -> Chain:
+        """The circuit as designed."""
+        return self.record.chain
+
+    @property
+    def verification(self) -> Verification:
+        """What the judges found."""
+        return self.record.verification
+
+    @property
+    def requirements(self) -> tuple[Requirement, ...]:
+        """Every requirement with its verdict."""
+        return self.record.verification.requirements
+
+    @property
+    def meets_spec(self) -> bool:
+        """True when every judged requirement is met."""
+        return self.record.verification.all_met
+
+    def network(self) -> circuit.Network:
+        """The linear circuit behind every figure."""
+        return circuit.build_network(self.record.chain)
+
+    def response(self, frequencies: ArrayLike) -> ComplexArray:
+        """Output over input [V per input unit] at frequencies [Hz], shape (F,)."""
+        return circuit.response(self.network(), frequencies)
+
+    def group_delay(self, frequencies: ArrayLike) -> FloatArray:
+        """Group delay [s] at frequencies [Hz], shape (F,)."""
+        return circuit.response_and_delay(self.network(), frequencies)[1]
+
+    def noise(self, frequencies: ArrayLike) -> circuit.NoiseSpectrum:
+        """Output noise density and its contributors at frequencies [Hz]."""
+        return circuit.noise(self.network(), frequencies)
+
+    def poles(self) -> ComplexArray:
+        """Poles of the whole chain [rad/s]."""
+        return circuit.poles(self.network(), self.chain.center_frequency)
+
+    def to_zpk(self) -> tuple[ComplexArray, ComplexArray, float]:
+        """Zeros, poles [rad/s] and gain, as scipy.signal takes them; the gain is exact at the centre."""
+        network, center = self.network(), self.chain.center_frequency
+        zeros, poles = circuit.zeros(network, center), circuit.poles(network, center)
+        s = 2j * np.pi * center
+        unit = np.exp(np.log(s - zeros).sum() - np.log(s - poles).sum())
+        return zeros, poles, float((circuit.response(network, [center])[0] / unit).real)
+
+    def to_control(self) -> control.TransferFunction:
+        """The chain as a transfer function of the package `control`, frequency in rad/s."""
+        import control
+
+        zeros, poles, gain = self.to_zpk()
+        return control.zpk(zeros, poles, gain)
+
+
+def design(spec: Spec, seed: int = 0) -> Design:
+    """Design a chain for a spec.
+
+    Args:
+        spec: what is asked, from `load_spec` or `parse_spec`.
+        seed: of every random draw.
+
+    Raises:
+        SynthError: the spec cannot be used or nothing can be built for it; the message says what would work.
+
+    Example:
+        >>> import synth
+        >>> chain = synth.design(synth.parse_spec(synth.starter_spec()))
+        >>> chain.meets_spec
+        True
+    """
+    entries = load_op_amps(spec.catalog_files)
+    chosen = select(spec.parts.op_amps, entries) if spec.parts.op_amps else tuple(entries.values())
+    found = plan(spec, tuple(entry.op_amp for entry in chosen), stocks_for(spec))
+    log.info("chosen: %s", found.candidates[0].description)
+    record = DesignRecord(
+        spec, seed, _digests(spec), found.chain, found.family, found.order, found.verification, found.candidates
+    )
+    return Design(record)
+
+
+def stocks_for(spec: Spec) -> Stocks:
+    """The resistors and capacitors that a spec allows."""
+    resistors, capacitors, extra = spec.parts.resistors, spec.parts.capacitors, spec.catalog_files
+    return Stocks(
+        resistor_stock(resistors.series, resistors.tolerance, resistors.temperature_coefficient, extra=extra),
+        capacitor_stock(
+            capacitors.series,
+            capacitors.tolerance,
+            capacitors.temperature_coefficient,
+            capacitors.dielectric,
+            extra=extra,
+        ),
+        coupling_stock(extra=extra),
+    )
+
+
+def _digests(spec: Spec) -> dict[str, str]:
+    """sha256 of the files that went in, by name; nothing for a spec that came from text."""
+    files = [Path(spec.source), *spec.catalog_files]
+    return {f.name: hashlib.sha256(f.read_bytes()).hexdigest() for f in files if f.is_file()}
+
+
+def check(given: Design | Path | str) -> Design:
+    """Rebuild the circuit from the parts alone and judge it anew.
+
+    Args:
+        given: a design, or the folder of one.
+    """
+    old = given if isinstance(given, Design) else load_design(given)
+    return replace(old, record=replace(old.record, verification=verify(old.chain, old.spec)))
+
+
+def load_design(path: Path | str) -> Design:
+    """Read a design folder.
+
+    Raises:
+        FolderError: it is no design folder of this tool, or was damaged.
+    """
+    return Design(folder.read_design(Path(path)), folder.is_edited(Path(path)))
+
+
+def save_design(chain: Design, path: Path | str, force: bool = False) -> None:
+    """Write a design folder, whole or not at all.
+
+    Args:
+        force: also replace a folder that is not a design, or whose parts were edited by hand.
+
+    Raises:
+        FolderError: the folder may not be replaced, or the disk refuses.
+    """
+    folder.write_folder(Path(path), design_files(chain), force)
+
+
+def check_folder(path: Path | str, spec: Spec, force: bool = False) -> None:
+    """Refuse a folder that may not be replaced before anything is computed."""
+    folder.check_target(Path(path), force, {"spec.toml": spec_text(spec).encode()})
+
+
+def design_files(chain: Design) -> Mapping[str, bytes]:
+    """Content of every file of the design folder, by name."""
+    from synth.output import bill, group_delay_plot, noise_plot, report, response_plot
+
+    record = chain.record
+    return {
+        "spec.toml": spec_text(record.spec).encode(),
+        "design.json": folder.to_json(record).encode(),
+        "bom.csv": bill.bill_csv(record).encode(),
+        "chain.cir": netlist(chain).encode(),
+        "report.txt": report.report_text(record).encode(),
+        "response.svg": response_plot.response_svg(record),
+        "group_delay.svg": group_delay_plot.group_delay_svg(record),
+        "noise.svg": noise_plot.noise_svg(record),
+    }
+
+
+def netlist(chain: Design, with_noise: bool = True) -> str:
+    """The chain as a netlist for any simulator of the SPICE3 class."""
+    comments = ["input: 1 V at node in stands for one input unit; output: node out"]
+    comments += [f"{s.name}: {s.topology}, {s.op_amp}, output node {s.output_node}" for s in chain.chain.stages]
+    return circuit.netlist_text(
+        chain.network(), chain.spec.title, comments, chain.chain.center_frequency, with_noise=with_noise
+    )
+
+
+def report(chain: Design) -> str:
+    """The report at 80 columns."""
+    from synth.output import report as text
+
+    return text.report_text(chain.record)
+
+
+def json_text(chain: Design) -> str:
+    """The content of design.json."""
+    return folder.to_json(chain.record)
+
+
+def write_text(path: Path, text: str) -> None:
+    """Write a new text file.
+
+    Raises:
+        SpecError: the file is there already, or cannot be written.
+    """
+    try:
+        with path.open("x", encoding="utf-8") as file:
+            file.write(text)
+    except FileExistsError:
+        raise SpecError(f"{path}: is there already; name another file or remove it") from None
+    except OSError as error:
+        raise SpecError(f"{path}: cannot be written: {error.strerror}; name another file") from error
+
+
+def spec_text(spec: Spec) -> str:
+    """The spec as TOML: the file it came from, or one written from its figures.
+
+    Raises:
+        SpecError: the file has changed since it was read.
+    """
+    source = Path(spec.source)
+    if source.is_file():
+        text = source.read_text(encoding="utf-8")
+        if parse_spec(text, spec.source, spec.folder) != spec:
+            raise SpecError(f"{source}: has changed since it was read; load it again")
+        return text
+    import tomli_w
+
+    return tomli_w.dumps(spec_to_dict(spec))
+
+
+__all__ = [
+    "Design",
+    "check",
+    "check_folder",
+    "design",
+    "design_files",
+    "json_text",
+    "load_design",
+    "load_spec",
+    "netlist",
+    "parse_spec",
+    "report",
+    "save_design",
+    "spec_text",
+    "starter_spec",
+    "stocks_for",
+    "write_text",
+]

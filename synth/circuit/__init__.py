@@ -1,0 +1,47 @@
+"""The one engine: every electrical number of a chain comes from here."""
+
+from __future__ import annotations
+
+from synth.circuit.analysis import (
+    NoiseSpectrum,
+    injected_voltages,
+    integrated,
+    node_voltages,
+    noise,
+    response,
+    response_and_delay,
+)
+from synth.circuit.assemble import INPUT, OUTPUT, TERMINAL, Drawn, build_network, build_values
+from synth.circuit.batch import batch_response
+from synth.circuit.loop import Margin, phase_margin, return_ratio
+from synth.circuit.netlist import comment_text, netlist_text
+from synth.circuit.network import ZERO_CELSIUS, Network
+from synth.circuit.modes import is_stable, poles, resonant_pairs, zeros
+
+__all__ = [
+    "INPUT",
+    "OUTPUT",
+    "TERMINAL",
+    "ZERO_CELSIUS",
+    "Drawn",
+    "Margin",
+    "Network",
+    "NoiseSpectrum",
+    "batch_response",
+    "build_values",
+    "comment_text",
+    "injected_voltages",
+    "integrated",
+    "is_stable",
+    "netlist_text",
+    "build_network",
+    "node_voltages",
+    "noise",
+    "phase_margin",
+    "poles",
+    "resonant_pairs",
+    "response",
+    "response_and_delay",
+    "return_ratio",
+    "zeros",
+]

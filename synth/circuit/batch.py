@@ -1,0 +1,133 @@
+"""Responses of many builds at many frequencies.
+
+Numerator and determinant of a circuit are polynomials in the frequency.  On a stretch of the jw axis they are
+interpolated from a few Chebyshev nodes [1]_, checked at frequencies held out, and the stretch is halved where the
+check fails; stretches too short to gain from interpolation are solved directly.
+
+References:
+    .. [1] J.-P. Berrut, L. N. Trefethen, "Barycentric Lagrange interpolation", SIAM Review 46 (2004) 501.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from synth.circuit.compiled import Program, compile_network, run
+from synth.circuit.linear import frequency_array
+from synth.circuit.network import ComplexArray, FloatArray, Network
+from synth.errors import CircuitError
+
+NODES = 21
+HELD_OUT = 3
+TOLERANCE = 1e-10  # of a response, relative to itself down to FLOOR of the largest in its stretch
+FLOOR = 1e-4  # 80 dB
+WORKING_SET = 8000  # complex numbers an operation handles at once: amortizes the call, stays in cache (measured)
+
+
+def batch_response(network: Network, values: FloatArray, frequencies: ArrayLike) -> ComplexArray:
+    """Response of every build at every frequency [V per input unit], shape (F, builds).
+
+    Args:
+        network: the circuit; its own values choose the elimination order.
+        values: element values, shape (elements, builds), as from `build_values`.
+        frequencies: [Hz], rising, shape (F,).
+
+    Raises:
+        CircuitError: shapes do not match, frequencies do not rise, or a build has no finite response.
+    """
+    f = frequency_array(frequencies)
+    if np.any(np.diff(f) <= 0):
+        raise CircuitError("frequencies must rise")
+    if values.ndim != 2 or values.shape[0] != len(network.elements):
+        raise CircuitError(f"values must have shape ({len(network.elements)}, builds), not {values.shape}")
+    program = compile_network(network, float(np.sqrt(max(f[0], f[-1] * 1e-6) * f[-1])) or 1.0)
+    out = np.empty((f.size, values.shape[1]), dtype=complex)
+    _stretch(program, values, f, out, np.arange(f.size))
+    if not np.all(np.isfinite(out)):
+        build = int(np.flatnonzero(~np.isfinite(out).all(axis=0))[0])
+        raise CircuitError(f"build {build} has no finite response; its circuit is singular")
+    return out
+
+
+def direct_response(network: Network, values: FloatArray, frequencies: ArrayLike) -> ComplexArray:
+    """As `batch_response`, every frequency solved: the reference for the interpolated result."""
+    f = frequency_array(frequencies)
+    program = compile_network(network, float(np.sqrt(max(f[0], f[-1] * 1e-6) * f[-1])) or 1.0)
+    numerator, determinant = _evaluate(program, values, f)
+    return numerator / determinant
+
+
+def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexArray, where: np.ndarray) -> None:
+    """Fill `out[where]`, interpolating where that saves solutions and passes its check."""
+    if where.size <= NODES + HELD_OUT:
+        numerator, determinant = _evaluate(program, values, f[where])
+        out[where] = numerator / determinant
+        return
+    low, high = f[where[0]], f[where[-1]]
+    held = where[np.linspace(0, where.size - 1, HELD_OUT + 2).astype(int)[1:-1]]
+    nodes = 0.5 * (low + high) - 0.5 * (high - low) * np.cos(np.pi * np.arange(NODES) / (NODES - 1))
+    if not _interpolates(program, values[:, : min(8, values.shape[1])], f, nodes, held):
+        middle = where.size // 2
+        _stretch(program, values, f, out, where[:middle])
+        _stretch(program, values, f, out, where[middle:])
+        return
+    weights = _barycentric(nodes, f[where])
+    failed: list[int] = []
+    for chunk in _chunks(values.shape[1], NODES + HELD_OUT):
+        numerator, determinant = run(program, values[:, chunk], _jw(np.concatenate([nodes, f[held]])))
+        h = (weights @ numerator[:NODES]) / (weights @ determinant[:NODES])
+        out[where[0] : where[-1] + 1, chunk] = h
+        exact = numerator[NODES:] / determinant[NODES:]
+        bad = _disagrees(h[held - where[0]], exact, np.abs(h).max(axis=0))
+        failed += [chunk.start + int(k) for k in np.flatnonzero(bad)]
+    if failed:
+        numerator, determinant = _evaluate(program, values[:, failed], f[where])
+        out[np.ix_(where, failed)] = numerator / determinant
+
+
+def _interpolates(program: Program, values: FloatArray, f: FloatArray, nodes: FloatArray, held: np.ndarray) -> bool:
+    """Whether a few builds, interpolated, agree with their direct solution at the held-out frequencies."""
+    numerator, determinant = run(program, values, _jw(np.concatenate([nodes, f[held]])))
+    weights = _barycentric(nodes, f[held])
+    h = (weights @ numerator[:NODES]) / (weights @ determinant[:NODES])
+    exact = numerator[NODES:] / determinant[NODES:]
+    return not _disagrees(h, exact, np.abs(numerator / determinant).max(axis=0)).any()
+
+
+def _disagrees(h: ComplexArray, exact: ComplexArray, peak: FloatArray) -> np.ndarray:
+    size = np.maximum(np.abs(exact), FLOOR * peak)
+    close = np.abs(h - exact) <= TOLERANCE * size
+    return ~close.all(axis=0)
+
+
+def _barycentric(nodes: FloatArray, f: FloatArray) -> FloatArray:
+    """Matrix that takes values at the Chebyshev points of the second kind to frequencies f, shape (F, nodes)."""
+    weight = np.where(np.arange(nodes.size) % 2 == 0, 1.0, -1.0)
+    weight[[0, -1]] *= 0.5
+    difference = f[:, None] - nodes[None, :]
+    hit = difference == 0
+    difference[hit] = 1.0
+    terms = weight / difference
+    matrix: FloatArray = terms / terms.sum(axis=1, keepdims=True)
+    rows = hit.any(axis=1)
+    matrix[rows] = hit[rows]
+    return matrix
+
+
+def _chunks(builds: int, frequencies: int) -> list[slice]:
+    size = max(1, WORKING_SET // frequencies)
+    return [slice(start, min(start + size, builds)) for start in range(0, builds, size)]
+
+
+def _jw(f: FloatArray) -> ComplexArray:
+    return 2j * np.pi * f[:, None]
+
+
+def _evaluate(program: Program, values: FloatArray, f: FloatArray) -> tuple[ComplexArray, ComplexArray]:
+    numerator = np.empty((f.size, values.shape[1]), dtype=complex)
+    determinant = np.empty_like(numerator)
+    for part in _chunks(f.size, 1):
+        for chunk in _chunks(values.shape[1], min(f.size, WORKING_SET)):
+            numerator[part, chunk], determinant[part, chunk] = run(program, values[:, chunk], _jw(f[part]))
+    return numerator, determinant

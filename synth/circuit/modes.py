@@ -1,0 +1,64 @@
+"""Poles and zeros of a circuit, from the generalized eigenproblem of its matrices.
+
+(G + s C) x = 0 becomes, with a real shift h, the ordinary eigenproblem of (G + h C)^-1 C, whose eigenvalues are
+1/(h - s); infinite poles fall on zero and are dropped.  Zeros are the poles of the system bordered by the input
+and output vectors.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from synth.circuit.network import ComplexArray, FloatArray, Network, matrices
+from synth.errors import CircuitError
+
+FARTHEST = 1e7  # poles beyond this multiple of the reference are taken as infinite
+
+
+def _finite_eigenvalues(G: FloatArray, C: FloatArray, reference: float) -> ComplexArray:
+    """Finite s with det(G + s C) = 0, sorted by magnitude and then imaginary part [rad/s]."""
+    shift = reference * 0.7310585786300049  # no natural frequency of a real circuit sits exactly here
+    shifted = G + shift * C
+    rows = np.abs(shifted).max(axis=1)
+    try:
+        spectrum = np.linalg.eigvals(np.linalg.solve(shifted / rows[:, None], C / rows[:, None]))
+    except np.linalg.LinAlgError:
+        raise CircuitError("the circuit has no unique solution; a node has no path to ground") from None
+    spectrum = spectrum[np.abs(spectrum) > 1.0 / (FARTHEST * reference)]
+    s = (shift - 1.0 / spectrum).astype(complex)
+    return s[np.lexsort((s.imag, np.abs(s)))]
+
+
+def _reference(reference_frequency: float) -> float:
+    if not np.isfinite(reference_frequency) or reference_frequency <= 0:
+        raise CircuitError(f"reference frequency {reference_frequency!r} Hz must be positive")
+    return float(2 * np.pi * reference_frequency)
+
+
+def poles(network: Network, reference_frequency: float) -> ComplexArray:
+    """All finite poles [rad/s], the largest pole at most 1e7 times the reference frequency [Hz]."""
+    m = matrices(network)
+    return _finite_eigenvalues(m.G, m.C, _reference(reference_frequency))
+
+
+def zeros(network: Network, reference_frequency: float) -> ComplexArray:
+    """All finite zeros of the transfer from input to output [rad/s], as `poles`."""
+    m = matrices(network)
+    n = len(m.nodes)
+    G, C = np.zeros((n + 1, n + 1)), np.zeros((n + 1, n + 1))
+    G[:n, :n], C[:n, :n] = m.G, m.C
+    G[:n, n] = -m.b
+    G[n, m.output] = 1.0
+    return _finite_eigenvalues(G, C, _reference(reference_frequency))
+
+
+def resonant_pairs(s: ComplexArray) -> tuple[tuple[float, float], ...]:
+    """Natural frequency [Hz] and Q of each complex pair, by frequency; real poles are left out."""
+    upper = s[s.imag > 1e-9 * np.abs(s)]
+    pairs = [(float(abs(p) / (2 * np.pi)), float(-abs(p) / (2 * p.real))) for p in upper if p.real != 0.0]
+    return tuple(sorted(pairs))
+
+
+def is_stable(s: ComplexArray) -> bool:
+    """True when every pole lies left of the imaginary axis."""
+    return bool(np.all(s.real < 0.0))

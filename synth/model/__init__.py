@@ -1,0 +1,1 @@
+"""What the layers pass on: frozen data, no computing."""

@@ -1,0 +1,189 @@
+"""The planner: families and orders by rising effort, each built on the stocked grid and judged on the exact circuit."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from synth.approximation import FAMILIES, PolePair, bandpass_pairs
+from synth.errors import CircuitError, InfeasibleError
+from synth.model.chain import Chain
+from synth.model.judgement import Requirement, Verification
+from synth.model.part import OpAmp
+from synth.model.record import Candidate
+from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
+from synth.planning.partition import partitions
+from synth.planning.workshop import Workshop, build_chain
+from synth.quantity import format_si
+from synth.spec import Spec
+from synth.topology import multiple_feedback
+from synth.topology.place import Stocks
+from synth.verification import relative_margin, verify
+
+MOST_SECTIONS = 6
+MOST_JUDGED = 8  # candidates built in full before the best of them is taken
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """The chain that was chosen, its verdict, and what else was considered."""
+
+    chain: Chain
+    verification: Verification
+    family: str
+    order: int
+    candidates: tuple[Candidate, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class _Proposal:
+    family: str
+    pairs: tuple[PolePair, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class _Built:
+    proposal: _Proposal
+    chain: Chain
+    verdict: Verification
+
+    def missed(self) -> set[str]:
+        return {r.name for r in self.verdict.requirements if r.met is False}
+
+    def worst(self) -> float:
+        missed = [relative_margin(r) for r in self.verdict.requirements if r.met is False]
+        return min(missed, default=0.0)
+
+
+def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks) -> Plan:
+    """The chain of least order that meets every judged requirement, or the one that misses least.
+
+    Raises:
+        InfeasibleError: no chain can be built; says which requirement binds and the nearest value that works.
+    """
+    check_supported(spec)
+    usable = usable_op_amps(spec, op_amps)
+    check_source_noise(spec)
+    attenuation = sensor_gain(spec)
+    gain = spec.overall_gain / spec.sensor.scale / attenuation
+    splits = partitions(spec, usable, gain, attenuation)
+    shop = Workshop(spec, usable, stocks, attenuation)
+    built: list[_Built] = []
+    lost: list[Candidate] = []
+    failure: InfeasibleError | None = None
+    for proposal in _proposals(spec):
+        screened = _screen(spec, proposal)
+        if screened is not None:
+            lost.append(screened)
+            continue
+        for split in splits:
+            try:
+                chain = build_chain(shop, proposal.pairs, split)
+                built.append(_Built(proposal, chain, verify(chain, spec)))
+            except (InfeasibleError, CircuitError) as error:
+                failure = failure or (error if isinstance(error, InfeasibleError) else InfeasibleError(str(error)))
+                lost.append(Candidate(_describe(proposal, None), False, "cannot be built", str(error)))
+                break
+            if built[-1].missed() != {"signal to noise"}:
+                break  # another split of the gain would not help
+        if built and (built[-1].verdict.all_met or len(built) >= MOST_JUDGED):
+            break
+    if not built:
+        raise failure or _no_proposal(spec, lost)
+    return _choose(built, lost)
+
+
+def _choose(built: list[_Built], lost: list[Candidate]) -> Plan:
+    order = sorted(
+        range(len(built)), key=lambda k: (-round(built[k].worst(), 9), len(built[k].proposal.pairs), k)
+    )
+    chosen = built[order[0]]
+    others = [_candidate(built[k], False) for k in range(len(built)) if k != order[0]]
+    candidates = (_candidate(chosen, True), *others, *lost)
+    return Plan(chosen.chain, chosen.verdict, chosen.proposal.family, len(chosen.proposal.pairs), candidates)
+
+
+def _candidate(entry: _Built, chosen: bool) -> Candidate:
+    missed = [r for r in entry.verdict.requirements if r.met is False]
+    description = _describe(entry.proposal, entry.chain)
+    if not missed:
+        return Candidate(description, chosen)
+    worst = min(missed, key=relative_margin)
+    return Candidate(description, chosen, worst.name, _margin_text(worst))
+
+
+def _margin_text(requirement: Requirement) -> str:
+    return format_si(requirement.margin or 0.0, requirement.unit, 3)
+
+
+def _describe(proposal: _Proposal, chain: Chain | None) -> str:
+    text = f"{proposal.family} x{len(proposal.pairs)}, Q {max(p.q for p in proposal.pairs):.3g}"
+    if chain is None:
+        return text
+    return f"{text}: " + ", ".join(f"{'G' if s.kind == 'gain' else 'B'} {s.op_amp}" for s in chain.stages)
+
+
+def _proposals(spec: Spec) -> Iterator[_Proposal]:
+    """Families and orders, least order first; what the spec insists on is kept."""
+    families = (spec.filter.family,) if spec.filter.family is not None else FAMILIES
+    counts = (spec.filter.sections,) if spec.filter.sections is not None else range(1, MOST_SECTIONS + 1)
+    for count in counts:
+        for family in families:
+            if count == 1 and family != families[0]:
+                continue  # one section is the same in every family
+            pairs = bandpass_pairs(family, count, spec.target.center_frequency, spec.target.bandwidth)
+            yield _Proposal(family, pairs)
+
+
+def _screen(spec: Spec, proposal: _Proposal) -> Candidate | None:
+    """A proposal that cannot do, and why: a Q beyond the topology, or rejects that even ideal sections miss."""
+    q = max(pair.q for pair in proposal.pairs)
+    if q > multiple_feedback.LARGEST_Q:
+        return Candidate(
+            _describe(proposal, None), False, "section Q", f"{multiple_feedback.LARGEST_Q - q:.3g}"
+        )
+    for reject in spec.target.reject:
+        short = ideal_rejection(proposal.pairs, spec.target.center_frequency, reject.frequency) - reject.by
+        if short < -6.0:  # the sensor's own rolloff may still help by a few dB; the judge decides
+            return Candidate(
+                _describe(proposal, None), False, f"reject {format_si(reject.frequency, 'Hz')}", f"{short:.3g} dB"
+            )
+    return None
+
+
+def ideal_rejection(pairs: tuple[PolePair, ...], center: float, frequency: float) -> float:
+    """Gain of ideal sections at the centre over that at a frequency [dB]."""
+
+    def gain_db(f: float) -> float:
+        return sum(-10 * math.log10(1 + (p.q * (f / p.frequency - p.frequency / f)) ** 2) for p in pairs)
+
+    return gain_db(center) - gain_db(frequency)
+
+
+def _no_proposal(spec: Spec, lost: list[Candidate]) -> InfeasibleError:
+    """Nothing passed the screen: the Q or a reject binds, with the nearest value that would work."""
+    steep = [c for c in lost if c.lost_on.startswith("reject")]
+    limit = multiple_feedback.LARGEST_Q
+    if not steep:
+        q = min(
+            max(p.q for p in proposal.pairs) for proposal in _proposals(spec)
+        )
+        wider = spec.target.bandwidth * q / limit
+        return InfeasibleError(
+            f"{spec.source}: target.bandwidth of {format_si(spec.target.bandwidth, 'Hz')} needs sections of Q {q:.3g}, "
+            f"beyond the {limit:g} that a section reaches; the narrowest that works is {format_si(wider * 1.001, 'Hz')}"
+        )
+    reject = next(r for r in spec.target.reject if f"reject {format_si(r.frequency, 'Hz')}" == steep[-1].lost_on)
+    reachable = max(
+        (
+            ideal_rejection(p.pairs, spec.target.center_frequency, reject.frequency)
+            for p in _proposals(spec)
+            if max(pair.q for pair in p.pairs) <= limit
+        ),
+        default=0.0,
+    )
+    return InfeasibleError(
+        f"{spec.source}: target.reject of {reject.by:.4g} dB at {format_si(reject.frequency, 'Hz')} is beyond "
+        f"{MOST_SECTIONS} sections of Q {limit:g}; the most that works is {reachable:.3g} dB, or narrow the bandwidth"
+    )

@@ -1,0 +1,100 @@
+"""Builds one proposed chain on the stocked grid: sections, gain stages, their order, the gain trimmed."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+
+from synth import circuit
+from synth.approximation import PolePair
+from synth.model.chain import Chain, StageTarget
+from synth.model.part import OpAmp
+from synth.planning.amplifiers import best_section_amplifier
+from synth.planning.partition import Partition, orders
+from synth.rounding import Section, gain_draft, round_section, trim_chain
+from synth.spec import Spec
+from synth.topology.place import Draft, Stocks, Surroundings, place
+from synth.verification.headroom import excursions
+
+TRIM_ROOM = 1.05  # what the gain's trim may still move
+
+
+@dataclass(frozen=True, slots=True)
+class Workshop:
+    """What every proposal of one spec is built from; remembers the sections it has rounded."""
+
+    spec: Spec
+    op_amps: tuple[OpAmp, ...]
+    stocks: Stocks
+    attenuation: float
+    rounded: dict[tuple[str, StageTarget], Section] = field(default_factory=dict)
+
+
+def surroundings(spec: Spec) -> Surroundings:
+    """What a chain for the spec stands between."""
+    target = spec.target
+    return Surroundings(
+        target.center_frequency, spec.environment.ambient, spec.sensor, target.load, target.load_capacitance or 0.0
+    )
+
+
+def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> Chain:
+    """Stages on the stocked grid, in the first order whose amplifiers carry all voltages, the gain trimmed.
+
+    Raises:
+        InfeasibleError: a section or a gain stage has no stocked values.
+    """
+    sections = _sections(shop, pairs, split.section_gain)
+    gains = _gains(shop, split)
+    around = surroundings(shop.spec)
+    best: tuple[float, tuple[Draft, ...]] | None = None
+    for order in orders(len(gains), len(sections)):
+        drafts = _in_order(order, gains, [section.draft for section in sections])
+        reserve = _reserve(place(drafts, shop.stocks, around), shop.spec)
+        if best is None or reserve > best[0] + 1e-9:
+            best = (reserve, drafts)
+        if reserve >= TRIM_ROOM:
+            break
+    assert best is not None
+    places = [k for k, draft in enumerate(best[1]) if draft.topology.kind == "bandpass"]
+    variants = {k: section.variants for k, section in zip(places, sections, strict=True)}
+    trimmed = trim_chain(best[1], variants, shop.stocks, around, shop.spec.overall_gain)
+    return place(trimmed, shop.stocks, around)
+
+
+def _sections(shop: Workshop, pairs: Sequence[PolePair], section_gain: float) -> tuple[Section, ...]:
+    op_amp = best_section_amplifier(shop.spec, shop.op_amps, max(pair.q for pair in pairs))
+    sections = []
+    for pair in pairs:
+        target = StageTarget(section_gain ** (1 / len(pairs)), 1.0, pair.frequency, pair.q)
+        key = (op_amp.type, target)
+        if key not in shop.rounded:
+            center, ambient = shop.spec.target.center_frequency, shop.spec.environment.ambient
+            shop.rounded[key] = round_section(target, op_amp, shop.stocks, center, ambient)
+        sections.append(shop.rounded[key])
+    return tuple(sections)
+
+
+def _gains(shop: Workshop, split: Partition) -> tuple[Draft, ...]:
+    """Gain stages; the last carries the factor that makes good the sensor's loss, the reciprocal of what is left."""
+    spec = shop.spec
+    drafts = []
+    for k, (gain, op_amp) in enumerate(zip(split.gains, split.op_amps, strict=True)):
+        factor = 1 / shop.attenuation if k == len(split.gains) - 1 else 1.0
+        source = (spec.sensor.resistance or 0.0) if k == 0 else 0.0
+        center, ambient = spec.target.center_frequency, spec.environment.ambient
+        drafts.append(gain_draft(StageTarget(gain, factor), op_amp, shop.stocks, center, ambient, source))
+    return tuple(drafts)
+
+
+def _in_order(order: Sequence[str], gains: Sequence[Draft], sections: Sequence[Draft]) -> tuple[Draft, ...]:
+    waiting: Mapping[str, Iterator[Draft]] = {"gain": iter(gains), "bandpass": iter(sections)}
+    return tuple(next(waiting[kind]) for kind in order)
+
+
+def _reserve(chain: Chain, spec: Spec) -> float:
+    """Smallest ratio of what an amplifier can carry to what it must, over swing, slew and input range."""
+    found = excursions(chain, circuit.build_network(chain), spec)
+    ratios = [min(e.allowed / e.peak, e.slew_allowed / e.slew) for e in found]
+    ratios += [e.input_allowed / e.input_peak for e in found if e.input_peak > 0]
+    return min(ratios)

@@ -1,0 +1,190 @@
+"""Stocked resistors for a gain stage, and the trim of the whole chain's gain in one of them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from synth import circuit
+from synth.circuit.network import BOLTZMANN, ZERO_CELSIUS, FloatArray
+from synth.errors import InfeasibleError
+from synth.model.chain import Chain, StageTarget
+from synth.model.part import OpAmp
+from synth.quantity import format_si
+from synth.rounding.section import Variant
+from synth.topology import non_inverting
+from synth.topology.place import Draft, Stocks, Surroundings, place
+
+FEEDBACK_RANGE = (1e3, 22e3)  # [ohm] light for the amplifier, small against its input capacitance
+GROUND_LEG_RANGE = (22.0, 4.7e3)  # [ohm]
+WINDOW = 1.6  # how far the ground leg may move for a better ratio
+COUPLING_RATIO = 100.0  # the coupling corner lies this far below the centre
+DC_SHARE = 0.1  # [V] that bias current may shift the output by
+BIAS_RANGE = (470.0, 100e3)  # [ohm]
+SOURCE_RATIO = 20.0  # least ratio of bias resistor to source resistance
+STEPS = 2  # of the series either side of the wanted feedback resistor
+TRIMS = 4
+GOOD = 1e-4  # of the gain: no better pair is looked for
+
+
+def gain_draft(
+    target: StageTarget, op_amp: OpAmp, stocks: Stocks, frequency: float, ambient: float, source_resistance: float
+) -> Draft:
+    """A gain stage with stocked values, its closed-loop gain at a frequency as near the target as the grid allows.
+
+    The ground leg is sized so that the noise of RF parallel RG stays below the amplifier's own.
+
+    Raises:
+        InfeasibleError: the bias current allows no bias resistor large against the source.
+    """
+    bias = bias_resistor(target.gain, op_amp, stocks, source_resistance)
+    wanted = _resistor_ratio(target.gain, op_amp, frequency)
+    quiet = op_amp.voltage_noise**2 / (4 * BOLTZMANN * (ambient + ZERO_CELSIUS))
+    leg = min(max(quiet, FEEDBACK_RANGE[0] / wanted, GROUND_LEG_RANGE[0]), FEEDBACK_RANGE[1] / wanted)
+    leg = min(max(leg, GROUND_LEG_RANGE[0]), GROUND_LEG_RANGE[1])
+    rg, rf = _ratio_pair(wanted, leg, stocks)
+    coupling = COUPLING_RATIO / (2 * math.pi * frequency * bias)
+    values = stocks.coupling.values
+    larger = values[values >= coupling * (1 - 1e-9)]
+    if larger.size == 0:
+        raise InfeasibleError(
+            f"no stocked coupling capacitor reaches {format_si(coupling, 'F')} for {format_si(bias, 'ohm')} at "
+            f"{format_si(frequency, 'Hz')}; raise target.center_frequency or take an amplifier of less bias current"
+        )
+    chosen = {"CC": float(larger[0]), "RB": bias, "RG": rg, "RF": rf}
+    return Draft(non_inverting.TOPOLOGY, target, op_amp, chosen)
+
+
+def bias_resistor(gain: float, op_amp: OpAmp, stocks: Stocks, source_resistance: float) -> float:
+    """Bias resistor [ohm]: as large as the bias current allows, and large against the source."""
+    largest = min(DC_SHARE / (op_amp.bias_current * gain), BIAS_RANGE[1])
+    least = max(BIAS_RANGE[0], SOURCE_RATIO * source_resistance)
+    if largest < least:
+        raise InfeasibleError(
+            f"the bias current of {op_amp.type} ({format_si(op_amp.bias_current, 'A')}) allows "
+            f"{format_si(largest, 'ohm')} at a gain of {gain:.3g}, the source of "
+            f"{format_si(source_resistance, 'ohm')} needs {format_si(least, 'ohm')}; take a type of less bias current"
+        )
+    values = stocks.resistors.values
+    fitting = values[(values <= largest) & (values >= least)]
+    return float(fitting[-1]) if fitting.size else float(values[np.argmin(np.abs(np.log(values / largest)))])
+
+
+def _resistor_ratio(gain: float, op_amp: OpAmp, frequency: float) -> float:
+    """RF/RG for a closed-loop gain magnitude at a frequency with the amplifier's finite gain.
+
+    Raises:
+        InfeasibleError: the amplifier does not reach the gain.
+    """
+    noise_gain = gain
+    for _ in range(60):
+        reached = noise_gain * non_inverting.magnitude(
+            noise_gain, frequency, op_amp.gain_bandwidth, op_amp.dc_gain
+        )
+        if abs(reached / gain - 1) < 1e-12:
+            break
+        noise_gain *= gain / reached
+        if noise_gain > 20 * gain:
+            raise InfeasibleError(f"{op_amp.type} does not reach a gain of {gain:.3g} at {format_si(frequency, 'Hz')}")
+    return max(noise_gain - 1, 0.05)
+
+
+def _ratio_pair(ratio: float, leg: float, stocks: Stocks) -> tuple[float, float]:
+    """Stocked RG near `leg` and RF with RF/RG nearest to `ratio`; ties go to the RG nearest `leg`."""
+    values = stocks.resistors.values
+    legs = values[(values >= leg / WINDOW) & (values <= leg * WINDOW)]
+    if legs.size == 0:
+        legs = values[[int(np.argmin(np.abs(np.log(values / leg))))]]
+    feedback = legs * ratio
+    nearest = np.argmin(np.abs(np.log(values[None, :] / feedback[:, None])), axis=1)
+    error = np.round(np.abs((1 + values[nearest] / legs) / (1 + ratio) - 1), 6)
+    order = np.lexsort((legs, np.round(np.abs(np.log(legs / leg)), 6), error))
+    return float(legs[order[0]]), float(values[nearest[order[0]]])
+
+
+@dataclass(frozen=True, slots=True)
+class _Lever:
+    """Other values for one draft, and by what factor each would move its gain."""
+
+    index: int
+    values: tuple[Mapping[str, float], ...]
+    factors: FloatArray
+
+
+def trim_chain(
+    drafts: Sequence[Draft], variants: Mapping[int, Sequence[Variant]], stocks: Stocks, around: Surroundings, gain: float
+) -> tuple[Draft, ...]:
+    """Move the chain's exact gain at the centre onto `gain` [V per input unit].
+
+    One stage cannot do it finely: ratios of a geometric series fall on the series again.  The last gain stage is
+    moved together with another one, or, where there is none, with a section that has other values as good.
+
+    Args:
+        variants: for a section's place in `drafts`, its other values of the same quality.
+
+    Raises:
+        InfeasibleError: there is no gain stage.
+    """
+    trimmed = list(drafts)
+    gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain"]
+    if not gains:
+        raise InfeasibleError("the chain has no gain stage to trim; ask for more gain")
+    best, best_error = tuple(trimmed), math.inf
+    for _ in range(TRIMS):
+        reached = chain_gain(place(trimmed, stocks, around))
+        error = abs(reached / gain - 1)
+        if error < best_error:
+            best, best_error = tuple(trimmed), error
+        if best_error < GOOD:
+            break
+        first = _gain_lever(trimmed, gains[-1], gain / reached, stocks)
+        second = _second_lever(trimmed, gains, variants, stocks)
+        for lever, k in zip((first, second), _best_pair(first.factors, second.factors, gain / reached), strict=True):
+            trimmed[lever.index] = replace(trimmed[lever.index], values=lever.values[k])
+    return best
+
+
+def _second_lever(
+    drafts: Sequence[Draft], gains: Sequence[int], variants: Mapping[int, Sequence[Variant]], stocks: Stocks
+) -> _Lever:
+    if len(gains) > 1:
+        return _gain_lever(drafts, gains[-2], 1.0, stocks)
+    if not variants:
+        return _Lever(gains[-1], (drafts[gains[-1]].values,), np.ones(1))
+    place_ = max(variants)
+    now = drafts[place_].values
+    current = next((v.gain for v in variants[place_] if v.values == now), variants[place_][0].gain)
+    options = [v.values for v in variants[place_]]
+    return _Lever(place_, tuple(options), np.array([v.gain / current for v in variants[place_]]))
+
+
+def _gain_lever(drafts: Sequence[Draft], index: int, factor: float, stocks: Stocks) -> _Lever:
+    """Stocked pairs near the present ground leg whose ratio lies within a few steps of the wanted one."""
+    now = drafts[index].values
+    grid = stocks.resistors.values
+    wanted = max((1 + now["RF"] / now["RG"]) * factor - 1, 0.05)
+    legs = grid[(grid >= now["RG"] / WINDOW) & (grid <= now["RG"] * WINDOW)]
+    nearest = np.searchsorted(grid, legs * wanted)
+    columns = np.clip(nearest[:, None] + np.arange(-STEPS, STEPS + 1), 0, grid.size - 1)
+    rg, rf = np.repeat(legs, columns.shape[1]), grid[columns].ravel()
+    factors = (1 + rf / rg) / (1 + now["RF"] / now["RG"])
+    options = tuple({**now, "RG": float(g), "RF": float(f)} for g, f in zip(rg, rf, strict=True))
+    return _Lever(index, options, factors)
+
+
+def _best_pair(first: FloatArray, second: FloatArray, wanted: float) -> tuple[int, int]:
+    """Indices whose product is nearest to `wanted`; within a step of a hundredth percent, the smallest move."""
+    error = np.round(np.abs(first[:, None] * second[None, :] / wanted - 1), 4)
+    move = np.round(np.abs(np.log(second))[None, :] + np.zeros_like(error), 6)
+    exact = np.abs(first[:, None] * second[None, :] / wanted - 1)
+    order = np.lexsort((np.arange(error.size), exact.ravel(), move.ravel(), error.ravel()))
+    i, j = np.unravel_index(int(order[0]), error.shape)
+    return int(i), int(j)
+
+
+def chain_gain(chain: Chain) -> float:
+    """Magnitude of the whole chain's gain at its centre [V per input unit]."""
+    return float(abs(circuit.response(circuit.build_network(chain), [chain.center_frequency])[0]))

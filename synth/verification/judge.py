@@ -1,0 +1,113 @@
+"""Judges any chain against any spec; knows nothing of how the chain was chosen."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from synth import circuit
+from synth.circuit.sensor import sensor_network
+from synth.model.chain import Chain, Stage
+from synth.model.judgement import Realized, SensorModel, StageResult, Verification
+from synth.spec import Spec
+from synth.verification.cautions import cautions
+from synth.verification.figures import noise_table, realized, response_table
+from synth.verification.headroom import Excursion, excursions
+from synth.verification.requirements import derived, judged, not_judged
+
+MARGIN_SPAN = (1e-3, 1e5)  # of the centre: where loop gains are searched for their unity crossings
+
+
+def verify(chain: Chain, spec: Spec) -> Verification:
+    """All figures of a chain and the verdict on every requirement.
+
+    Raises:
+        CircuitError: the chain has no solution, or is no bandpass.
+    """
+    network = circuit.build_network(chain)
+    center = spec.target.center_frequency
+    table = response_table(network, center, spec.target.bandwidth)
+    band = realized(network, table, spec)
+    noise = noise_table(network, table, band, spec)
+    found = excursions(chain, network, spec)
+    margins = tuple(
+        circuit.phase_margin(network, a.ref, center * MARGIN_SPAN[0], center * MARGIN_SPAN[1])
+        for a in network.amplifiers
+    )
+    requirements = (
+        *judged(spec, network, table, band, noise),
+        *derived(found, margins, band),
+        *not_judged(spec),
+    )
+    stages = _stage_results(chain, network, band, found, margins)
+    model = sensor_model(chain)
+    return Verification(
+        table, noise, band, model, stages, requirements, cautions(spec, chain, requirements)
+    )
+
+
+def sensor_model(chain: Chain) -> SensorModel:
+    """Poles, zeros and loss of the sensor's own response, terminals open."""
+    network = sensor_network(chain.sensor, chain.ambient)
+    center = chain.center_frequency
+    gain = abs(circuit.response(network, [center])[0]) / chain.sensor.scale
+    return SensorModel(
+        tuple(complex(p) for p in circuit.poles(network, center)),
+        tuple(complex(z) for z in circuit.zeros(network, center)),
+        float(gain),
+        0.0,
+    )
+
+
+def _stage_results(
+    chain: Chain,
+    network: circuit.Network,
+    band: Realized,
+    found: tuple[Excursion, ...],
+    margins: tuple[circuit.Margin, ...],
+) -> tuple[StageResult, ...]:
+    voltages = circuit.node_voltages(network, [chain.center_frequency])[0]
+    index = {node: k for k, node in enumerate(network.unknowns)}
+    excursion = {e.ref: e for e in found}
+    margin = {m.ref: m for m in margins}
+    pairs = match_pairs(chain, band)
+    results = []
+    for stage in chain.stages:
+        ratio = voltages[index[stage.output_node]] / voltages[index[stage.input_node]]
+        ref = next(r for r in stage.parts if chain.part(r).kind == "op-amp")
+        f0, q = pairs.get(stage.name, (None, None))
+        sign = 1.0 if ratio.real >= 0 else -1.0
+        results.append(
+            StageResult(
+                stage.name,
+                sign * float(abs(ratio)),
+                f0,
+                q,
+                excursion[ref].level,
+                excursion[ref].peak,
+                margin[ref].phase_margin if margin[ref].crossing is not None else None,
+            )
+        )
+    return tuple(results)
+
+
+def match_pairs(chain: Chain, band: Realized) -> dict[str, tuple[float, float]]:
+    """Which realized pole pair belongs to which bandpass section: the nearest in frequency and Q, each used once."""
+    pairs = list(circuit.resonant_pairs(np.array(band.poles)))
+    sections = [stage for stage in chain.stages if stage.kind == "bandpass"]
+    found: dict[str, tuple[float, float]] = {}
+    for stage in sorted(sections, key=lambda s: (-(s.target.q or 0.0), s.target.center_frequency or 0.0)):
+        best = min(pairs, key=lambda pair: _distance(stage, pair), default=None)
+        if best is not None:
+            pairs.remove(best)
+            found[stage.name] = best
+    return found
+
+
+def _distance(stage: Stage, pair: tuple[float, float]) -> float:
+    f0, q = stage.target.center_frequency, stage.target.q
+    assert f0 is not None
+    assert q is not None
+    return abs(math.log(pair[0] / f0)) * q + abs(math.log(abs(pair[1]) / q))
+
