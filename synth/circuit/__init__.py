@@ -14,9 +14,9 @@ from synth.circuit.analysis import (
 from synth.circuit.assemble import INPUT, OUTPUT, TERMINAL, Drawn, build_network, build_values
 from synth.circuit.batch import batch_response
 from synth.circuit.loop import Margin, phase_margin, return_ratio
+from synth.circuit.modes import is_stable, poles, resonant_pairs, zeros
 from synth.circuit.netlist import comment_text, netlist_text
 from synth.circuit.network import ZERO_CELSIUS, Network
-from synth.circuit.modes import is_stable, poles, resonant_pairs, zeros
 
 __all__ = [
     "INPUT",
@@ -28,13 +28,13 @@ __all__ = [
     "Network",
     "NoiseSpectrum",
     "batch_response",
+    "build_network",
     "build_values",
     "comment_text",
     "injected_voltages",
     "integrated",
     "is_stable",
     "netlist_text",
-    "build_network",
     "node_voltages",
     "noise",
     "phase_margin",

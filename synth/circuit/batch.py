@@ -11,7 +11,7 @@ References:
 from __future__ import annotations
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from synth.circuit.compiled import Program, compile_network, run
 from synth.circuit.linear import frequency_array
@@ -58,7 +58,7 @@ def direct_response(network: Network, values: FloatArray, frequencies: ArrayLike
     return numerator / determinant
 
 
-def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexArray, where: np.ndarray) -> None:
+def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexArray, where: NDArray[np.intp]) -> None:
     """Fill `out[where]`, interpolating where that saves solutions and passes its check."""
     if where.size <= NODES + HELD_OUT:
         numerator, determinant = _evaluate(program, values, f[where])
@@ -83,10 +83,12 @@ def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexAr
         failed += [chunk.start + int(k) for k in np.flatnonzero(bad)]
     if failed:
         numerator, determinant = _evaluate(program, values[:, failed], f[where])
-        out[np.ix_(where, failed)] = numerator / determinant
+        out[where[:, None], failed] = numerator / determinant
 
 
-def _interpolates(program: Program, values: FloatArray, f: FloatArray, nodes: FloatArray, held: np.ndarray) -> bool:
+def _interpolates(
+    program: Program, values: FloatArray, f: FloatArray, nodes: FloatArray, held: NDArray[np.intp]
+) -> bool:
     """Whether a few builds, interpolated, agree with their direct solution at the held-out frequencies."""
     numerator, determinant = run(program, values, _jw(np.concatenate([nodes, f[held]])))
     weights = _barycentric(nodes, f[held])
@@ -95,10 +97,10 @@ def _interpolates(program: Program, values: FloatArray, f: FloatArray, nodes: Fl
     return not _disagrees(h, exact, np.abs(numerator / determinant).max(axis=0)).any()
 
 
-def _disagrees(h: ComplexArray, exact: ComplexArray, peak: FloatArray) -> np.ndarray:
+def _disagrees(h: ComplexArray, exact: ComplexArray, peak: FloatArray) -> NDArray[np.bool_]:
     size = np.maximum(np.abs(exact), FLOOR * peak)
-    close = np.abs(h - exact) <= TOLERANCE * size
-    return ~close.all(axis=0)
+    wrong: NDArray[np.bool_] = np.any(np.abs(h - exact) > TOLERANCE * size, axis=0)
+    return wrong | ~np.isfinite(h).all(axis=0)
 
 
 def _barycentric(nodes: FloatArray, f: FloatArray) -> FloatArray:
@@ -121,7 +123,7 @@ def _chunks(builds: int, frequencies: int) -> list[slice]:
 
 
 def _jw(f: FloatArray) -> ComplexArray:
-    return 2j * np.pi * f[:, None]
+    return np.asarray(2j * np.pi * f[:, None], dtype=np.complex128)
 
 
 def _evaluate(program: Program, values: FloatArray, f: FloatArray) -> tuple[ComplexArray, ComplexArray]:

@@ -22,6 +22,7 @@ import numpy as np
 from synth.circuit.network import ComplexArray, FloatArray, Network, Stamps, stamps
 from synth.errors import CircuitError
 
+_NOTHING: ComplexArray = np.zeros((1, 1), dtype=complex)
 PIVOT_THRESHOLD = 0.05  # of the largest entry in its row
 
 
@@ -141,36 +142,31 @@ def run(program: Program, values: FloatArray, s: ComplexArray) -> tuple[ComplexA
     Returns:
         two arrays of shape (F, builds); the response is their quotient.
     """
-    slots = _fill(program, values, s)
+    slots = _fill(program, values, s)  # fill-in slots are set before they are read; used-up ones keep stale values
     determinant: ComplexArray = np.ones((1, 1), dtype=complex)
     for step in program.steps:
         pivot = slots[step.pivot]
-        assert pivot is not None
         determinant = determinant * (pivot * (1.0 / step.scale))
         inverse = 1.0 / pivot
         for column_slot, updates in step.rows:
-            column = slots[column_slot]
-            assert column is not None
-            factor = column * inverse
+            factor = slots[column_slot] * inverse
             for source, target, fresh in updates:
                 product = factor * slots[source]
                 slots[target] = -product if fresh else slots[target] - product
-            slots[column_slot] = None
     shape = (s.shape[0], values.shape[1])
     pivot_slot, rhs_slot, scale = program.last
     rhs = slots[rhs_slot] if rhs_slot >= 0 else np.zeros((1, 1))
-    assert rhs is not None
     numerator = np.broadcast_to(determinant * rhs * (1.0 / scale), shape)
     return numerator, np.broadcast_to(determinant * slots[pivot_slot] * (1.0 / scale), shape)
 
 
-def _fill(program: Program, values: FloatArray, frequency: ComplexArray) -> list[ComplexArray | None]:
+def _fill(program: Program, values: FloatArray, frequency: ComplexArray) -> list[ComplexArray]:
     """Initial slots, conductance + s capacitance; of shape (1, 1) where nothing varies."""
     s = program.stamps
     order = np.argsort(program.slot, kind="stable")
     bounds = np.searchsorted(program.slot[order], np.arange(program.initial + 1))
     varies = np.any(values != values[:, :1], axis=1)
-    slots: list[ComplexArray | None] = [None] * program.slots
+    slots: list[ComplexArray] = [_NOTHING] * program.slots
     for k in range(program.initial):
         members = order[bounds[k] : bounds[k + 1]]
         moving = bool(varies[s.element[members]].any())

@@ -37,7 +37,7 @@ def solve(Y: ComplexArray, rhs: ComplexArray | FloatArray) -> ComplexArray:
         CircuitError: there is no unique or no finite solution.
     """
     try:
-        x: ComplexArray = np.linalg.solve(Y, np.broadcast_to(rhs, Y.shape[:2])[..., None])[..., 0]
+        x = np.asarray(np.linalg.solve(Y, np.broadcast_to(rhs, Y.shape[:2])[..., None])[..., 0], dtype=np.complex128)
     except np.linalg.LinAlgError:
         raise CircuitError("the circuit has no unique solution; a node has no path to ground") from None
     if not np.all(np.isfinite(x)):

@@ -48,7 +48,8 @@ def return_ratio(network: Network, ref: str, frequencies: ArrayLike) -> ComplexA
             injected[m.index(node)] += sign
     x = np.concatenate([solve(Y, injected / scale), np.zeros((f.size, 1))], axis=1)
     back = x[:, m.index(source.nodes[2])] - x[:, m.index(source.nodes[3])]
-    return -source.value * back
+    ratio: ComplexArray = -source.value * back
+    return ratio
 
 
 def phase_margin(network: Network, ref: str, low: float, high: float) -> Margin:

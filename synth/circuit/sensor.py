@@ -114,11 +114,10 @@ def sensor_noise(sensor: Sensor) -> tuple[NoiseSource, ...]:
     if sensor.noise is None:
         return ()
     if _noise_seat(sensor):
-        return (
-            NoiseSource("sen_noise", ("sig0", TERMINAL), sensor.noise / TINY_RESISTANCE, owner="sensor", label="sensor"),
-        )
-    resistance = sensor.resistance or TINY_RESISTANCE
-    return (NoiseSource("sen_noise", (GROUND, TERMINAL), sensor.noise / resistance, owner="sensor", label="sensor"),)
+        nodes, resistance = ("sig0", TERMINAL), TINY_RESISTANCE
+    else:
+        nodes, resistance = (GROUND, TERMINAL), sensor.resistance or TINY_RESISTANCE
+    return (NoiseSource("sen_noise", nodes, sensor.noise / resistance, owner="sensor", label="sensor"),)
 
 
 def sensor_network(sensor: Sensor, ambient: float) -> Network:

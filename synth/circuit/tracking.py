@@ -27,7 +27,8 @@ def track_pole(program: Program, values: FloatArray, start: ComplexArray) -> tup
     """
 
     def determinant(s: ComplexArray) -> ComplexArray:
-        return run(program, values, s[None, :])[1][0]
+        value: ComplexArray = run(program, values, s[None, :])[1][0]
+        return value
 
     size = np.abs(start)
     s0, s1, s2 = start * (1 + 1e-3), start * (1 - 1e-3j), start.copy()

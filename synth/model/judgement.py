@@ -101,9 +101,9 @@ class StageResult:
         name: of the stage.
         gain: signed where the phase is within 90 degrees of 0 (plus) or 180 (minus) [V/V].
         center_frequency, q: realized pole pair in the whole chain, None for a gain stage.
-        level: [V] rms at its output at full scale.
-        peak: [V] largest voltage at its output: full scale and interference in the worst phase.
-        phase_margin: [degree] of its amplifier's loop, None when the loop gain never reaches one.
+        level: [V] rms at full scale at the output of its fullest amplifier.
+        peak: [V] largest voltage there: full scale and interference in the worst phase.
+        phase_margin: [degree] of its worst amplifier's loop, None when the loop gain never reaches one.
     """
 
     name: str

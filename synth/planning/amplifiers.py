@@ -84,8 +84,8 @@ def section_candidates(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> tupl
     for op_amp in op_amps:
         if op_amp.minimum_noise_gain > 1:
             continue  # the loop is closed by capacitors: unity noise gain at high frequency
-        shift = -multiple_feedback.frequency_shift(center, q, op_amp.gain_bandwidth)
-        loss = -multiple_feedback.q_loss(q, op_amp.dc_gain)
+        shift = abs(multiple_feedback.frequency_shift(q, center / op_amp.gain_bandwidth)[0])
+        loss = abs(multiple_feedback.q_loss(q, op_amp.dc_gain))
         if shift > LARGEST_SHIFT or loss > LARGEST_LOSS or _unity_margin(op_amp) < UNITY_MARGIN:
             continue
         moved = shift * op_amp.gain_bandwidth_spread / center_share

@@ -12,7 +12,7 @@ from synth.errors import InfeasibleError
 from synth.model.part import OpAmp
 from synth.quantity import format_si
 from synth.spec import Spec
-from synth.topology import TOPOLOGIES
+from synth.topology import SECTIONS
 from synth.verification import rails
 
 
@@ -34,10 +34,9 @@ def check_supported(spec: Spec) -> None:
         if present:
             raise InfeasibleError(f"{spec.source}: {key}: no chain can be designed for it; give {instead}")
     topology = spec.filter.topology
-    sections = [t.name for t in TOPOLOGIES.values() if t.kind == "bandpass"]
-    if topology is not None and topology not in sections:
+    if topology is not None and topology not in SECTIONS:
         raise InfeasibleError(
-            f'{spec.source}: filter.topology = "{topology}": has no design here; choose one of {", ".join(sections)} '
+            f'{spec.source}: filter.topology = "{topology}": has no design here; choose one of {", ".join(SECTIONS)} '
             "or leave it out"
         )
 

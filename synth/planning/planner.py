@@ -139,9 +139,9 @@ def _proposals(spec: Spec) -> Iterator[_Proposal]:
 def _screen(spec: Spec, proposal: _Proposal) -> Candidate | None:
     """A proposal that cannot do, and why: a Q beyond the topology, or rejects that even ideal sections miss."""
     q = max(pair.q for pair in proposal.pairs)
-    if q > multiple_feedback.LARGEST_Q:
+    if q > multiple_feedback.TOPOLOGY.largest_q:
         return Candidate(
-            _describe(proposal, None), False, "section Q", f"{multiple_feedback.LARGEST_Q - q:.3g}"
+            _describe(proposal, None), False, "section Q", f"{multiple_feedback.TOPOLOGY.largest_q - q:.3g}"
         )
     for reject in spec.target.reject:
         short = ideal_rejection(proposal.pairs, spec.target.center_frequency, reject.frequency) - reject.by
@@ -164,7 +164,7 @@ def ideal_rejection(pairs: tuple[PolePair, ...], center: float, frequency: float
 def _no_proposal(spec: Spec, lost: list[Candidate]) -> InfeasibleError:
     """Nothing passed the screen: the Q or a reject binds, with the nearest value that would work."""
     steep = [c for c in lost if c.lost_on.startswith("reject")]
-    limit = multiple_feedback.LARGEST_Q
+    limit = multiple_feedback.TOPOLOGY.largest_q
     if not steep:
         q = min(
             max(p.q for p in proposal.pairs) for proposal in _proposals(spec)

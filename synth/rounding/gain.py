@@ -115,7 +115,11 @@ class _Lever:
 
 
 def trim_chain(
-    drafts: Sequence[Draft], variants: Mapping[int, Sequence[Variant]], stocks: Stocks, around: Surroundings, gain: float
+    drafts: Sequence[Draft],
+    variants: Mapping[int, Sequence[Variant]],
+    stocks: Stocks,
+    around: Surroundings,
+    gain: float,
 ) -> tuple[Draft, ...]:
     """Move the chain's exact gain at the centre onto `gain` [V per input unit].
 

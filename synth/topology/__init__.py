@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 from synth.topology import multiple_feedback, non_inverting
-from synth.topology.base import Slot, Topology
+from synth.topology.base import SectionTopology, Slot, Topology
 
-TOPOLOGIES = {t.name: t for t in (non_inverting.TOPOLOGY, multiple_feedback.TOPOLOGY)}
+SECTIONS: dict[str, SectionTopology] = {t.name: t for t in (multiple_feedback.TOPOLOGY,)}
+GAINS: dict[str, Topology] = {t.name: t for t in (non_inverting.TOPOLOGY,)}
 
-__all__ = ["TOPOLOGIES", "Slot", "Topology", "multiple_feedback", "non_inverting"]
+__all__ = ["GAINS", "SECTIONS", "SectionTopology", "Slot", "Topology", "multiple_feedback", "non_inverting"]

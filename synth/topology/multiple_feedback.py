@@ -17,29 +17,8 @@ References:
 from __future__ import annotations
 
 import numpy as np
-from numpy.typing import NDArray
 
-from synth.topology.base import Slot, Topology
-
-FloatArray = NDArray[np.float64]
-
-LARGEST_Q = 25.0  # the resistor spread is 4 Q^2, and finite DC gain costs 2 Q^2/A0 of Q
-
-TOPOLOGY = Topology(
-    name="multiple-feedback",
-    title="multiple-feedback bandpass",
-    kind="bandpass",
-    slots=(
-        Slot("R1A", "resistor", "input resistor, sets the gain", ("in", "a"), sets_frequency=True),
-        Slot("R1B", "resistor", "input shunt, trims the frequency", ("a", "0"), sets_frequency=True),
-        Slot("C1", "capacitor", "feedback to the input node", ("a", "out"), sets_frequency=True),
-        Slot("C2", "capacitor", "to the inverting input", ("a", "m"), sets_frequency=True),
-        Slot("R2", "resistor", "feedback, sets the bandwidth", ("m", "out"), sets_frequency=True),
-        Slot("U", "op-amp", "amplifier", ("0", "m", "out")),
-    ),
-    sign=-1,
-    source="Franco, 3rd ed., sec. 3.5",
-)
+from synth.topology.base import FloatArray, SectionTopology, Slot, Values, no_fixed
 
 
 def resistors(
@@ -70,14 +49,45 @@ def resistors(
     return r1a, r1b, r2
 
 
-def frequency_shift(frequency: float, q: float, gain_bandwidth: float) -> float:
-    """First-order relative shift of the centre by a finite gain-bandwidth product, -Q f0/GBW.
+def _solve(frequency: FloatArray, q: FloatArray, gain: FloatArray, given: Values) -> Values:
+    r1a, r1b, r2 = resistors(frequency, q, gain, given["C1"], given["C2"])
+    return {"R1A": r1a, "R1B": r1b, "R2": r2}
 
-    Franco, Example 6.12; the Q rises by the same share, for equal capacitors and any gain.
+
+def frequency_shift(q: float, ratio: float) -> tuple[float, float]:
+    """First-order shifts of frequency and Q for f0/GBW = `ratio`: -Q ratio, +Q ratio, equal capacitors, any gain.
+
+    Franco, Example 6.12.
     """
-    return -q * frequency / gain_bandwidth
+    return -q * ratio, q * ratio
 
 
 def q_loss(q: float, dc_gain: float) -> float:
-    """First-order relative loss of Q by a finite DC gain, -2 Q^2/A0 (equal capacitors)."""
+    """First-order relative shift of Q by a finite DC gain, -2 Q^2/A0 (equal capacitors)."""
     return -2 * q**2 / dc_gain
+
+
+TOPOLOGY = SectionTopology(
+    name="multiple-feedback",
+    title="multiple-feedback bandpass",
+    kind="bandpass",
+    slots=(
+        Slot("R1A", "resistor", "input resistor, sets the gain", ("in", "a"), sets_frequency=True),
+        Slot("R1B", "resistor", "input shunt, trims the frequency", ("a", "0"), sets_frequency=True),
+        Slot("C1", "capacitor", "feedback to the input node", ("a", "out"), sets_frequency=True),
+        Slot("C2", "capacitor", "to the inverting input", ("a", "m"), sets_frequency=True),
+        Slot("R2", "resistor", "feedback, sets the bandwidth", ("m", "out"), sets_frequency=True),
+        Slot("U", "op-amp", "amplifier", ("0", "m", "out")),
+    ),
+    sign=-1,
+    source="Franco, 3rd ed., sec. 3.5",
+    tuned=("R1A", "R1B", "R2"),
+    fixed=no_fixed,
+    solve=_solve,
+    trimmer="R1B",
+    shift=frequency_shift,
+    loss=q_loss,
+    noise_gain=lambda q: 2 * q**2,
+    largest_q=25.0,
+    limit="its resistor spread is 4 Q^2 and finite DC gain costs 2 Q^2/A0 of Q",
+)

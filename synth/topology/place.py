@@ -24,7 +24,7 @@ class Stocks:
 
 @dataclass(frozen=True, slots=True)
 class Draft:
-    """A stage on paper: its topology, what is asked of it, its amplifier and the value of each passive slot."""
+    """A stage on paper: its topology, what is asked of it, its amplifiers' type and the value of each passive slot."""
 
     topology: Topology
     target: StageTarget
@@ -45,7 +45,9 @@ class Surroundings:
 
 def place(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> Chain:
     """The chain of parts: stages in order, references counted along it, the last output named `out`."""
-    amplifiers = amplifier_references([draft.op_amp for draft in drafts])
+    amplifiers = iter(
+        amplifier_references([d.op_amp for d in drafts for slot in d.topology.slots if slot.kind == "op-amp"])
+    )
     counts = {"resistor": 0, "capacitor": 0, "gain": 0, "bandpass": 0}
     parts: list[Part] = []
     stages: list[Stage] = []
@@ -59,7 +61,7 @@ def place(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> Chai
         for slot in draft.topology.slots:
             nodes = tuple(_node(local, node, following, k + 1) for local in slot.nodes)
             if slot.kind == "op-amp":
-                part = _op_amp(amplifiers[k], name, slot, nodes, draft.op_amp)
+                part = _op_amp(next(amplifiers), name, slot, nodes, draft.op_amp)
             else:
                 counts[slot.kind] += 1
                 ref = f"{'R' if slot.kind == 'resistor' else 'C'}{counts[slot.kind]}"

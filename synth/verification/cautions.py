@@ -6,7 +6,6 @@ import math
 import re
 
 from synth.model.chain import Chain
-from synth.model.judgement import Requirement
 from synth.quantity import format_si
 from synth.spec import Spec
 
@@ -21,7 +20,7 @@ HAZARDS = (
 )
 
 
-def cautions(spec: Spec, chain: Chain, requirements: tuple[Requirement, ...]) -> tuple[str, ...]:
+def cautions(spec: Spec, chain: Chain) -> tuple[str, ...]:
     """Hazards that the spec shows, and what the figures leave open."""
     found = [text for pattern, text in HAZARDS if re.search(pattern, spec.title, re.IGNORECASE)]
     total = _voltage_gain_db(spec)

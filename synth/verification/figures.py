@@ -63,8 +63,9 @@ def realized(network: circuit.Network, table: ResponseTable, spec: Spec) -> Real
     if above.size == 0 or below.size == 0:
         side = "below" if below.size == 0 else "above"
         raise CircuitError(f"the chain has no -3 dB point {side} its centre; it is not a bandpass")
-    high = _crossing(network, abs(at_center), table.frequency[middle + above[0] - 1], table.frequency[middle + above[0]])
-    low = _crossing(network, abs(at_center), table.frequency[below[-1]], table.frequency[below[-1] + 1])
+    f, up, down = table.frequency, middle + int(above[0]), int(below[-1])
+    high = _crossing(network, abs(at_center), float(f[up - 1]), float(f[up]))
+    low = _crossing(network, abs(at_center), float(f[down]), float(f[down + 1]))
     terminal = abs(at_center) / spec.sensor.scale
     return Realized(
         math.sqrt(low * high),

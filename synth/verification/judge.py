@@ -42,9 +42,7 @@ def verify(chain: Chain, spec: Spec) -> Verification:
     )
     stages = _stage_results(chain, network, band, found, margins)
     model = sensor_model(chain)
-    return Verification(
-        table, noise, band, model, stages, requirements, cautions(spec, chain, requirements)
-    )
+    return Verification(table, noise, band, model, stages, requirements, cautions(spec, chain))
 
 
 def sensor_model(chain: Chain) -> SensorModel:
@@ -75,7 +73,9 @@ def _stage_results(
     results = []
     for stage in chain.stages:
         ratio = voltages[index[stage.output_node]] / voltages[index[stage.input_node]]
-        ref = next(r for r in stage.parts if chain.part(r).kind == "op-amp")
+        refs = [r for r in stage.parts if chain.part(r).kind == "op-amp"]
+        fullest = max(refs, key=lambda r: excursion[r].peak)
+        loop = min((margin[r] for r in refs), key=lambda m: m.phase_margin)
         f0, q = pairs.get(stage.name, (None, None))
         sign = 1.0 if ratio.real >= 0 else -1.0
         results.append(
@@ -84,9 +84,9 @@ def _stage_results(
                 sign * float(abs(ratio)),
                 f0,
                 q,
-                excursion[ref].level,
-                excursion[ref].peak,
-                margin[ref].phase_margin if margin[ref].crossing is not None else None,
+                excursion[fullest].level,
+                excursion[fullest].peak,
+                loop.phase_margin if loop.crossing is not None else None,
             )
         )
     return tuple(results)

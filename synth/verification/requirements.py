@@ -63,9 +63,8 @@ def judged(
         variation = delay_variation(network, center, target.bandwidth)
         yield limited("group delay variation", "s", variation, at_most=target.group_delay_variation)
     if target.signal_to_noise is not None:
-        yield limited(
-            "signal to noise", "dB", noise.smallest_reading_snr_db, target.signal_to_noise, note="at the smallest reading"
-        )
+        note = "at the smallest reading"
+        yield limited("signal to noise", "dB", noise.smallest_reading_snr_db, target.signal_to_noise, note=note)
 
 
 def derived(found: tuple[Excursion, ...], margins: tuple[circuit.Margin, ...], band: Realized) -> Iterator[Requirement]:
