@@ -3,7 +3,10 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from dataclasses import dataclass
+
+import numpy as np
 
 from synth.errors import InfeasibleError
 from synth.model.part import OpAmp
@@ -11,7 +14,7 @@ from synth.parts.op_amps import phase_margin
 from synth.quantity import format_si
 from synth.rounding.gain import BIAS_RANGE, DC_SHARE, SOURCE_RATIO
 from synth.spec import Spec
-from synth.topology import multiple_feedback, non_inverting
+from synth.topology import SECTIONS, SectionTopology, non_inverting
 
 ACCURACY_SHARE = 0.2  # of the accuracy, that the gain-bandwidth spread of one gain stage may take
 DEFAULT_ACCURACY = 0.03  # where the spec asks none
@@ -32,6 +35,14 @@ class Fit:
     op_amp: OpAmp
     largest_gain: float
     noise: float
+
+
+@dataclass(frozen=True, slots=True)
+class SectionCircuit:
+    """A section's circuit and the amplifier type for it."""
+
+    topology: SectionTopology
+    op_amp: OpAmp
 
 
 def gain_candidates(spec: Spec, op_amps: tuple[OpAmp, ...], source_resistance: float) -> tuple[Fit, ...]:
@@ -71,29 +82,40 @@ def input_noise(op_amp: OpAmp, frequency: float, source_resistance: float) -> fl
     return math.sqrt(voltage + current * source_resistance**2)
 
 
-def section_candidates(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> tuple[OpAmp, ...]:
-    """Amplifiers for a multiple-feedback section, best first: by how much their spreads move its pole pair.
+def section_circuits(
+    spec: Spec, op_amps: tuple[OpAmp, ...], q: float, topologies: Iterable[SectionTopology]
+) -> tuple[SectionCircuit, ...]:
+    """Circuits and amplifiers for a section of some Q, best first: by how much amplifier spreads move its pole pair.
 
-    Finite gain-bandwidth moves the frequency by -Q f0/GBW and Q by as much, finite DC gain Q by -2 Q^2/A0; the
-    spread of each counts, in units of what centre and bandwidth tolerate.  Within a factor of 1.5, or once below a
-    tenth of the tolerance, the quieter one wins, then the lower supply current.
+    Finite gain-bandwidth and DC gain move frequency and Q; the spread of each counts, in units of what centre and
+    bandwidth tolerate.  A circuit that stays inside the tolerance beats one that does not, then fewer amplifiers win,
+    then the smaller effect in steps of 1.5, once below a tenth of the tolerance the quieter, then the lower current.
     """
-    center = spec.target.center_frequency
-    center_share = spec.target.center_tolerance * spec.target.bandwidth / center
-    found = []
-    for op_amp in op_amps:
-        if op_amp.minimum_noise_gain > 1:
-            continue  # the loop is closed by capacitors: unity noise gain at high frequency
-        shift = abs(multiple_feedback.frequency_shift(q, center / op_amp.gain_bandwidth)[0])
-        loss = abs(multiple_feedback.q_loss(q, op_amp.dc_gain))
-        if shift > LARGEST_SHIFT or loss > LARGEST_LOSS or _unity_margin(op_amp) < UNITY_MARGIN:
+    ranked = []
+    for topology in topologies:
+        if q > topology.largest_q:
             continue
-        moved = shift * op_amp.gain_bandwidth_spread / center_share
-        widened = (loss * OPEN_LOOP_SPREAD + shift * op_amp.gain_bandwidth_spread) / spec.target.bandwidth_tolerance
-        score = max(moved, widened, 0.1)
-        steps = (_steps(score / 0.1), _steps(section_noise(op_amp, center, q) / 1e-9))
-        found.append((*steps, op_amp.supply_current, op_amp.type, op_amp))
-    return tuple(row[-1] for row in sorted(found, key=lambda row: row[:4]))
+        for op_amp in op_amps:
+            score = _spread_score(spec, op_amp, q, topology)
+            if score is not None:
+                noise = section_noise(op_amp, spec.target.center_frequency, q, topology)
+                key = (score > 1, topology.amplifiers, _steps(max(score, 0.1) / 0.1), _steps(noise / 1e-9))
+                ranked.append(((*key, op_amp.supply_current, op_amp.type, topology.name), topology, op_amp))
+    return tuple(SectionCircuit(row[1], row[2]) for row in sorted(ranked, key=lambda row: row[0]))
+
+
+def _spread_score(spec: Spec, op_amp: OpAmp, q: float, topology: SectionTopology) -> float | None:
+    """Worst effect of the amplifier's spreads over what is tolerated; None where the amplifier cannot do it."""
+    if op_amp.minimum_noise_gain > 1 or _unity_margin(op_amp) < UNITY_MARGIN:
+        return None  # the loops are closed by capacitors: unity noise gain at high frequency
+    center = spec.target.center_frequency
+    shift, stretch = (abs(x) for x in topology.shift(q, center / op_amp.gain_bandwidth))
+    loss = abs(topology.loss(q, op_amp.dc_gain))
+    if max(shift, stretch) > LARGEST_SHIFT or loss > LARGEST_LOSS:
+        return None
+    moved = shift * op_amp.gain_bandwidth_spread * center / (spec.target.center_tolerance * spec.target.bandwidth)
+    widened = loss * OPEN_LOOP_SPREAD + stretch * op_amp.gain_bandwidth_spread
+    return max(moved, widened / spec.target.bandwidth_tolerance)
 
 
 def _steps(ratio: float) -> int:
@@ -101,45 +123,55 @@ def _steps(ratio: float) -> int:
     return round(math.log(ratio) / math.log(1.5))
 
 
-def section_noise(op_amp: OpAmp, frequency: float, q: float) -> float:
-    """Amplifier noise of a section at its centre, over its noise gain 2 Q^2 [V/rtHz].
+def section_noise(op_amp: OpAmp, frequency: float, q: float, topology: SectionTopology) -> float:
+    """Amplifier noise of a section, referred to its output at unity gain and divided by 2 Q [V/rtHz].
 
-    Voltage noise meets 2 Q^2, current noise Q R2 (nodal analysis of the section at its centre); R2 is that of the
-    usual impedance level.
+    Voltage noise meets the circuit's noise gain, current noise the resistors of the usual impedance level.
     """
-    r2 = 2 * q / (2 * math.pi * frequency * USUAL_CAPACITANCE)
-    return input_noise(op_amp, frequency, r2 / (2 * q))
+    reactance = 1 / (2 * math.pi * frequency * USUAL_CAPACITANCE)
+    return input_noise(op_amp, frequency, reactance) * topology.noise_gain(q) / (2 * q)
 
 
 def _unity_margin(op_amp: OpAmp) -> float:
     return phase_margin(op_amp.gain_bandwidth, op_amp.dc_gain, op_amp.second_pole, 1.0)
 
 
-def best_section_amplifier(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> OpAmp:
-    """The first of `section_candidates`.
+def choose_section_circuit(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> SectionCircuit:
+    """The first of `section_circuits`, over the circuit that the spec insists on or all.
 
     Raises:
-        InfeasibleError: none is fast enough; names the bandwidth or centre that would do.
+        InfeasibleError: none is fast enough; names the bandwidth that would do.
     """
-    found = section_candidates(spec, op_amps, q)
+    topologies = allowed_topologies(spec)
+    found = section_circuits(spec, op_amps, q, topologies)
     if found:
         return found[0]
     stable = [a for a in op_amps if a.minimum_noise_gain <= 1 and _unity_margin(a) >= UNITY_MARGIN]
-    center = spec.target.center_frequency
     if not stable:
         raise InfeasibleError(
             f"{spec.source}: parts.op_amps: a bandpass section needs an amplifier that is stable at unity gain; "
             "allow one, or leave parts.op_amps out"
         )
-    reachable = {
-        a.type: min(LARGEST_SHIFT * a.gain_bandwidth / center, math.sqrt(LARGEST_LOSS / 2 * a.dc_gain)) for a in stable
-    }
-    fastest = max(stable, key=lambda a: reachable[a.type])
-    possible = reachable[fastest.type]
+    for reachable in np.geomspace(q, 0.5, 60):
+        if section_circuits(spec, tuple(stable), float(reachable), topologies):
+            wider = spec.target.bandwidth * q / float(reachable)
+            raise InfeasibleError(
+                f"{spec.source}: target.bandwidth of {format_si(spec.target.bandwidth, 'Hz')} needs a section of Q "
+                f"{q:.3g} at {format_si(spec.target.center_frequency, 'Hz')}, too much for any amplifier allowed; Q "
+                f"{reachable:.3g} works: widen target.bandwidth to about {format_si(wider, 'Hz')}"
+            )
     raise InfeasibleError(
-        f"{spec.source}: a section of Q {q:.3g} at {format_si(center, 'Hz')} is too much for any amplifier allowed; "
-        f"{fastest.type} reaches Q {possible:.3g}: widen target.bandwidth to about "
-        f"{format_si(spec.target.bandwidth * q / possible, 'Hz')}"
+        f"{spec.source}: target.center_frequency of {format_si(spec.target.center_frequency, 'Hz')} is too high for a "
+        "section of any Q with the amplifiers allowed; lower it or allow faster types in parts.op_amps"
     )
 
 
+def allowed_topologies(spec: Spec) -> tuple[SectionTopology, ...]:
+    """The section circuit that the spec insists on, or all."""
+    wanted = spec.filter.topology
+    return tuple(SECTIONS.values()) if wanted is None else (SECTIONS[wanted],)
+
+
+def largest_q(spec: Spec) -> float:
+    """The highest Q that any section circuit allowed may be given."""
+    return max(topology.largest_q for topology in allowed_topologies(spec))

@@ -6,22 +6,23 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from synth.approximation import FAMILIES, PolePair, bandpass_pairs
+from synth.approximation import DEFAULT_RIPPLE, FAMILIES, PolePair, bandpass_pairs
 from synth.errors import CircuitError, InfeasibleError
 from synth.model.chain import Chain
 from synth.model.judgement import Requirement, Verification
 from synth.model.part import OpAmp
 from synth.model.record import Candidate
+from synth.planning.amplifiers import largest_q
 from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
 from synth.planning.partition import partitions
 from synth.planning.workshop import Workshop, build_chain
 from synth.quantity import format_si
 from synth.spec import Spec
-from synth.topology import multiple_feedback
 from synth.topology.place import Stocks
 from synth.verification import relative_margin, verify
 
 MOST_SECTIONS = 6
+MOST_RIPPLE = 1.0  # [dB] of a Chebyshev chain, however much is allowed
 MOST_JUDGED = 8  # candidates built in full before the best of them is taken
 
 
@@ -126,23 +127,24 @@ def _describe(proposal: _Proposal, chain: Chain | None) -> str:
 
 def _proposals(spec: Spec) -> Iterator[_Proposal]:
     """Families and orders, least order first; what the spec insists on is kept."""
+    target = spec.target
+    ripple = min(target.ripple or DEFAULT_RIPPLE, MOST_RIPPLE)
     families = (spec.filter.family,) if spec.filter.family is not None else FAMILIES
     counts = (spec.filter.sections,) if spec.filter.sections is not None else range(1, MOST_SECTIONS + 1)
     for count in counts:
         for family in families:
             if count == 1 and family != families[0]:
                 continue  # one section is the same in every family
-            pairs = bandpass_pairs(family, count, spec.target.center_frequency, spec.target.bandwidth)
+            pairs = bandpass_pairs(family, count, target.center_frequency, target.bandwidth, ripple)
             yield _Proposal(family, pairs)
 
 
 def _screen(spec: Spec, proposal: _Proposal) -> Candidate | None:
     """A proposal that cannot do, and why: a Q beyond the topology, or rejects that even ideal sections miss."""
     q = max(pair.q for pair in proposal.pairs)
-    if q > multiple_feedback.TOPOLOGY.largest_q:
-        return Candidate(
-            _describe(proposal, None), False, "section Q", f"{multiple_feedback.TOPOLOGY.largest_q - q:.3g}"
-        )
+    limit = largest_q(spec)
+    if q > limit:
+        return Candidate(_describe(proposal, None), False, "section Q", f"{limit - q:.3g}")
     for reject in spec.target.reject:
         short = ideal_rejection(proposal.pairs, spec.target.center_frequency, reject.frequency) - reject.by
         if short < -6.0:  # the sensor's own rolloff may still help by a few dB; the judge decides
@@ -164,7 +166,7 @@ def ideal_rejection(pairs: tuple[PolePair, ...], center: float, frequency: float
 def _no_proposal(spec: Spec, lost: list[Candidate]) -> InfeasibleError:
     """Nothing passed the screen: the Q or a reject binds, with the nearest value that would work."""
     steep = [c for c in lost if c.lost_on.startswith("reject")]
-    limit = multiple_feedback.TOPOLOGY.largest_q
+    limit = largest_q(spec)
     if not steep:
         q = min(
             max(p.q for p in proposal.pairs) for proposal in _proposals(spec)

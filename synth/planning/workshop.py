@@ -9,7 +9,7 @@ from synth import circuit
 from synth.approximation import PolePair
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
-from synth.planning.amplifiers import best_section_amplifier
+from synth.planning.amplifiers import choose_section_circuit
 from synth.planning.partition import Partition, orders
 from synth.rounding import Section, gain_draft, round_section, trim_chain
 from synth.spec import Spec
@@ -27,7 +27,7 @@ class Workshop:
     op_amps: tuple[OpAmp, ...]
     stocks: Stocks
     attenuation: float
-    rounded: dict[tuple[str, StageTarget], Section] = field(default_factory=dict)
+    rounded: dict[tuple[str, str, StageTarget], Section] = field(default_factory=dict)
 
 
 def surroundings(spec: Spec) -> Surroundings:
@@ -63,14 +63,16 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
 
 
 def _sections(shop: Workshop, pairs: Sequence[PolePair], section_gain: float) -> tuple[Section, ...]:
-    op_amp = best_section_amplifier(shop.spec, shop.op_amps, max(pair.q for pair in pairs))
+    chosen = choose_section_circuit(shop.spec, shop.op_amps, max(pair.q for pair in pairs))
     sections = []
     for pair in pairs:
         target = StageTarget(section_gain ** (1 / len(pairs)), 1.0, pair.frequency, pair.q)
-        key = (op_amp.type, target)
+        key = (chosen.topology.name, chosen.op_amp.type, target)
         if key not in shop.rounded:
             center, ambient = shop.spec.target.center_frequency, shop.spec.environment.ambient
-            shop.rounded[key] = round_section(target, op_amp, shop.stocks, center, ambient)
+            shop.rounded[key] = round_section(
+                target, chosen.op_amp, shop.stocks, center, ambient, chosen.topology
+            )
         sections.append(shop.rounded[key])
     return tuple(sections)
 
