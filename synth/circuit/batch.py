@@ -22,6 +22,7 @@ NODES = 21
 HELD_OUT = 3
 TOLERANCE = 1e-10  # of a response, relative to itself down to FLOOR of the largest in its stretch
 FLOOR = 1e-4  # 80 dB
+ROUNDING = 4 * float(np.finfo(float).eps)  # of the largest node value, in an interpolated value (measured)
 WORKING_SET = 8000  # complex numbers an operation handles at once: amortizes the call, stays in cache (measured)
 
 
@@ -37,13 +38,14 @@ def batch_response(network: Network, values: FloatArray, frequencies: ArrayLike)
         CircuitError: shapes do not match, frequencies do not rise, or a build has no finite response.
     """
     f = frequency_array(frequencies)
-    if np.any(np.diff(f) <= 0):
-        raise CircuitError("frequencies must rise")
+    if f.size == 0 or np.any(np.diff(f) <= 0):
+        raise CircuitError("frequencies must rise, and there must be one at least")
     if values.ndim != 2 or values.shape[0] != len(network.elements):
         raise CircuitError(f"values must have shape ({len(network.elements)}, builds), not {values.shape}")
     program = compile_network(network, float(np.sqrt(max(f[0], f[-1] * 1e-6) * f[-1])) or 1.0)
     out = np.empty((f.size, values.shape[1]), dtype=complex)
-    _stretch(program, values, f, out, np.arange(f.size))
+    with np.errstate(all="ignore"):  # a build without a finite response is refused below
+        _stretch(program, values, f, out, np.arange(f.size))
     if not np.all(np.isfinite(out)):
         build = int(np.flatnonzero(~np.isfinite(out).all(axis=0))[0])
         raise CircuitError(f"build {build} has no finite response; its circuit is singular")
@@ -58,43 +60,56 @@ def direct_response(network: Network, values: FloatArray, frequencies: ArrayLike
     return numerator / determinant
 
 
-def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexArray, where: NDArray[np.intp]) -> None:
+def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexArray, where: np.ndarray) -> None:
     """Fill `out[where]`, interpolating where that saves solutions and passes its check."""
     if where.size <= NODES + HELD_OUT:
         numerator, determinant = _evaluate(program, values, f[where])
         out[where] = numerator / determinant
         return
     low, high = f[where[0]], f[where[-1]]
-    held = where[np.linspace(0, where.size - 1, HELD_OUT + 2).astype(int)[1:-1]]
+    held = np.linspace(0, where.size - 1, HELD_OUT + 2).astype(int)[1:-1]
     nodes = 0.5 * (low + high) - 0.5 * (high - low) * np.cos(np.pi * np.arange(NODES) / (NODES - 1))
-    if not _interpolates(program, values[:, : min(8, values.shape[1])], f, nodes, held):
+    weights = _barycentric(nodes, f[where])
+    s = _jw(np.concatenate([nodes, f[where][held]]))
+    if _interpolated(program, values[:, : min(8, values.shape[1])], s, weights, held)[1].any():
         middle = where.size // 2
         _stretch(program, values, f, out, where[:middle])
         _stretch(program, values, f, out, where[middle:])
         return
-    weights = _barycentric(nodes, f[where])
     failed: list[int] = []
-    for chunk in _chunks(values.shape[1], NODES + HELD_OUT):
-        numerator, determinant = run(program, values[:, chunk], _jw(np.concatenate([nodes, f[held]])))
-        h = (weights @ numerator[:NODES]) / (weights @ determinant[:NODES])
+    for chunk in _chunks(values.shape[1], s.size):
+        h, bad = _interpolated(program, values[:, chunk], s, weights, held)
         out[where[0] : where[-1] + 1, chunk] = h
-        exact = numerator[NODES:] / determinant[NODES:]
-        bad = _disagrees(h[held - where[0]], exact, np.abs(h).max(axis=0))
         failed += [chunk.start + int(k) for k in np.flatnonzero(bad)]
     if failed:
         numerator, determinant = _evaluate(program, values[:, failed], f[where])
-        out[where[:, None], failed] = numerator / determinant
+        out[np.ix_(where, failed)] = numerator / determinant
 
 
-def _interpolates(
-    program: Program, values: FloatArray, f: FloatArray, nodes: FloatArray, held: NDArray[np.intp]
-) -> bool:
-    """Whether a few builds, interpolated, agree with their direct solution at the held-out frequencies."""
-    numerator, determinant = run(program, values, _jw(np.concatenate([nodes, f[held]])))
-    weights = _barycentric(nodes, f[held])
-    h = (weights @ numerator[:NODES]) / (weights @ determinant[:NODES])
+def _interpolated(
+    program: Program, values: FloatArray, s: ComplexArray, weights: FloatArray, held: np.ndarray
+) -> tuple[ComplexArray, np.ndarray]:
+    """Interpolated response of every build, and which builds fail the check.
+
+    A build fails where it disagrees at the held-out frequencies, or where its determinant, as small as it gets at
+    the peak of the response, drowns in the rounding of its largest node value.
+
+    Args:
+        s: the nodes and then the held-out frequencies [rad/s], shape (NODES + HELD_OUT, 1).
+        weights: from the nodes to the frequencies wanted, shape (F, NODES); held: indices of the held-out ones.
+
+    Returns:
+        response (F, builds) and failures (builds,).
+    """
+    numerator, determinant = run(program, values, s)
+    bottom = weights @ determinant[:NODES]
+    h = (weights @ numerator[:NODES]) / bottom
+    size = np.abs(h)
+    at_peak = np.abs(bottom[size.argmax(axis=0), np.arange(size.shape[1])])
+    rounding = ROUNDING * np.abs(determinant[:NODES]).max(axis=0)
+    accurate = rounding <= TOLERANCE * at_peak
     exact = numerator[NODES:] / determinant[NODES:]
-    return not _disagrees(h, exact, np.abs(numerator / determinant).max(axis=0)).any()
+    return h, ~accurate | _disagrees(h[held], exact, size.max(axis=0))
 
 
 def _disagrees(h: ComplexArray, exact: ComplexArray, peak: FloatArray) -> NDArray[np.bool_]:

@@ -80,8 +80,8 @@ def compile_network(network: Network, frequency: float) -> Program:
     for (r, c), k in slots.items():
         rows[r][c] = entries[k]
     steps = _eliminate(rows, slots, s.output, n)
-    left = next(r for r in range(n) if rows[r] is not None and s.output in rows[r])
-    if rows[left][s.output] == 0:
+    left = next((r for r in range(n) if s.output in rows[r]), None)
+    if left is None or rows[left][s.output] == 0:
         raise CircuitError("the circuit is singular: its output node has no path to ground")
     last = (slots[left, s.output], slots.get((left, n), -1), abs(rows[left][s.output]))
     return Program(s, slot, initial, len(slots), tuple(steps), last)
@@ -117,14 +117,15 @@ def _eliminate(rows: list[dict[int, complex]], slots: dict[tuple[int, int], int]
 
 def _choose_pivot(rows: list[dict[int, complex]], active_rows: set[int], columns: set[int]) -> tuple[int, int]:
     in_column = {c: sum(1 for r in active_rows if c in rows[r]) for c in columns}
-    best: tuple[tuple[int, float, int, int], int, int] | None = None
+    best: tuple[tuple[bool, int, float, int, int], int, int] | None = None
     for r in sorted(active_rows):
         largest = max((abs(v) for c, v in rows[r].items() if c < len(rows)), default=0.0)
         width = len(rows[r]) - 1
         for c, v in rows[r].items():
-            if c not in columns or abs(v) < PIVOT_THRESHOLD * largest or v == 0:
+            if c not in columns or v == 0:
                 continue
-            key = (width * (in_column[c] - 1), -abs(v) / largest, r, c)
+            small = abs(v) < PIVOT_THRESHOLD * largest  # taken only where a column has nothing larger to offer
+            key = (small, width * (in_column[c] - 1), -abs(v) / largest, r, c)
             if best is None or key < best[0]:
                 best = (key, r, c)
     if best is None:

@@ -1,8 +1,9 @@
 """Poles and zeros of a circuit, from the generalized eigenproblem of its matrices.
 
 (G + s C) x = 0 becomes, with a real shift h, the ordinary eigenproblem of (G + h C)^-1 C, whose eigenvalues are
-1/(h - s); infinite poles fall on zero and are dropped.  Zeros are the poles of the system bordered by the input
-and output vectors.
+1/(h - s); infinite poles fall on zero and are dropped.  Where several hang together, as the zeros of a cascade of
+low-passes do, rounding brings them back from infinity: far ones are kept only where the determinant does vanish.
+Zeros are the poles of the system bordered by the input and output vectors.
 """
 
 from __future__ import annotations
@@ -13,6 +14,7 @@ from synth.circuit.network import ComplexArray, FloatArray, Network, matrices
 from synth.errors import CircuitError
 
 FARTHEST = 1e7  # poles beyond this multiple of the reference are taken as infinite
+FAR = 1e3  # beyond this multiple of the reference a pole must prove itself
 
 
 def _finite_eigenvalues(G: FloatArray, C: FloatArray, reference: float) -> ComplexArray:
@@ -26,7 +28,19 @@ def _finite_eigenvalues(G: FloatArray, C: FloatArray, reference: float) -> Compl
         raise CircuitError("the circuit has no unique solution; a node has no path to ground") from None
     spectrum = spectrum[np.abs(spectrum) > 1.0 / (FARTHEST * reference)]
     s = (shift - 1.0 / spectrum).astype(complex)
+    s = s[[abs(x) < FAR * reference or _vanishes(G, C, x) for x in s]]
     return s[np.lexsort((s.imag, np.abs(s)))]
+
+
+def _vanishes(G: FloatArray, C: FloatArray, s: complex) -> bool:
+    """Whether det(G + s C) at s is well below its size a tenth of s away."""
+
+    def logarithm(x: complex) -> float:
+        Y = G + x * C
+        rows = np.abs(Y).max(axis=1)
+        return float(np.linalg.slogdet(Y / rows[:, None])[1] + np.log(rows).sum())
+
+    return logarithm(s) < logarithm(s * (1 + 0.1j)) - 1.0
 
 
 def _reference(reference_frequency: float) -> float:
