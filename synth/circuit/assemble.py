@@ -7,7 +7,7 @@ array where the nominal one is a number, and the same arithmetic serves both.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -26,6 +26,7 @@ from synth.model.chain import Chain
 from synth.model.part import OpAmp, Part
 
 INPUT, OUTPUT = "in", "out"
+SUPPLY = "vcc"  # held by an ideal supply: ground to the signal
 INPUT_TRANSCONDUCTANCE = 1e-3  # [S] scale of the amplifier model's inside; no effect at its terminals
 Drawn = Mapping[str, FloatArray]
 
@@ -72,7 +73,7 @@ def _walk(chain: Chain, drawn: Drawn) -> Iterator[Placed]:
     for name, kind, nodes, value, noisy in sensor_elements(chain.sensor, INPUT):
         yield Placed(name, kind, nodes, value, noisy, "sensor")
     omega = 2 * np.pi * chain.center_frequency
-    for part in chain.parts:
+    for part in map(_at_signal_ground, chain.parts):
         if part.kind == "resistor":
             yield from _resistor(part, drawn)
         elif part.kind == "capacitor":
@@ -83,6 +84,13 @@ def _walk(chain: Chain, drawn: Drawn) -> Iterator[Placed]:
         yield Placed("R_load", "conductance", (OUTPUT, GROUND), 1 / chain.load_resistance, True, "load")
     if chain.load_capacitance > 0:
         yield Placed("C_load", "capacitance", (OUTPUT, GROUND), chain.load_capacitance, False, "load")
+
+
+def _at_signal_ground(part: Part) -> Part:
+    """The part with the supply node taken as ground."""
+    if SUPPLY not in part.nodes:
+        return part
+    return replace(part, nodes=tuple(GROUND if node == SUPPLY else node for node in part.nodes))
 
 
 def _resistor(part: Part, drawn: Drawn) -> Iterator[Placed]:

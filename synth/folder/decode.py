@@ -7,6 +7,7 @@ people and scripts, and are not read.
 from __future__ import annotations
 
 from pathlib import Path
+from typing import get_args
 
 import numpy as np
 
@@ -34,7 +35,7 @@ from synth.quantity import show
 from synth.spec import Spec, spec_from_dict
 
 ABSOLUTE_ZERO = -273.15  # [degC]
-STAGE_KINDS: dict[str, StageKind] = {"gain": "gain", "pre-emphasis": "pre-emphasis", "bandpass": "bandpass"}
+STAGE_KINDS: dict[str, StageKind] = {kind: kind for kind in get_args(StageKind)}
 PART_KINDS: dict[str, PartKind] = {"resistor": "resistor", "capacitor": "capacitor", "op-amp": "op-amp"}
 
 TOP = (

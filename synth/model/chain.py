@@ -9,7 +9,7 @@ from typing import Literal
 from synth.model.part import OpAmp, Part
 from synth.spec import Sensor
 
-StageKind = Literal["gain", "pre-emphasis", "bandpass"]
+StageKind = Literal["gain", "pre-emphasis", "bandpass", "reference"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,10 +35,11 @@ class Stage:
 
     Attributes:
         name: unique in the chain ("gain 1", "bandpass 2").
-        kind: gain, pre-emphasis or bandpass.
+        kind: gain, pre-emphasis or bandpass; reference for the mid-rail of a single supply, which stands first and
+            has no signal path.
         topology: name of the circuit that realizes it, as in synth.topology.
         target: what was asked of it.
-        op_amp: type number of its amplifier.
+        op_amp: type number of its amplifier, "" where it has none.
         input_node, output_node: node names; the output node is its test point.
         parts: references of its parts, in reading order.
     """

@@ -43,6 +43,8 @@ def _heading(number: int, stage: Stage) -> list[str]:
 
 def _figures(stage: Stage, result: StageResult | None) -> list[str]:
     target = stage.target
+    if stage.kind == "reference":
+        return [f"{_INDENT}carries {quantity_text(result.level if result else None, 'V', 3)} rms at full scale"]
     gain = result.gain if result else None
     items = [_figure("gain", _factor(gain), _factor(math.copysign(target.gain, gain or 1.0)))]
     if target.pre_emphasis != 1:

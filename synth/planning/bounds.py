@@ -28,7 +28,6 @@ def check_supported(spec: Spec) -> None:
         (sensor.burden is not None, "sensor.burden", "sensor.resistance with a high-pass in sensor.rolloff"),
         (sensor.motional is not None, "sensor.motional", "sensor.resistance, with its rolloff in sensor.rolloff"),
         (any(r.kind == "table" for r in sensor.rolloff), 'sensor.rolloff.kind = "table"', "one of the other kinds"),
-        (spec.supply.negative is None, "supply.negative left out", "a dual supply, such as negative = \"-5 V\""),
     ]
     for present, key, instead in unsupported:
         if present:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from synth.approximation import DEFAULT_RIPPLE, FAMILIES, PolePair, bandpass_pairs
 from synth.errors import CircuitError, InfeasibleError
@@ -80,8 +80,10 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks) -> Plan:
             continue
         for split in splits:
             try:
-                chain = build_chain(shop, proposal.pairs, split)
-                built.append(_Built(proposal, chain, verify(chain, spec)))
+                made = build_chain(shop, proposal.pairs, split)
+                verdict = verify(made.chain, spec)
+                verdict = replace(verdict, cautions=(*made.notes, *verdict.cautions))
+                built.append(_Built(proposal, made.chain, verdict))
             except (InfeasibleError, CircuitError) as error:
                 failure = failure or (error if isinstance(error, InfeasibleError) else InfeasibleError(str(error)))
                 lost.append(Candidate(_describe(proposal, None), False, "cannot be built", str(error)))
@@ -122,7 +124,8 @@ def _describe(proposal: _Proposal, chain: Chain | None) -> str:
     text = f"{proposal.family} x{len(proposal.pairs)}, Q {max(p.q for p in proposal.pairs):.3g}"
     if chain is None:
         return text
-    return f"{text}: " + ", ".join(f"{'G' if s.kind == 'gain' else 'B'} {s.op_amp}" for s in chain.stages)
+    signal = [stage for stage in chain.stages if stage.kind != "reference"]
+    return f"{text}: " + ", ".join(f"{'G' if s.kind == 'gain' else 'B'} {s.op_amp}" for s in signal)
 
 
 def _proposals(spec: Spec) -> Iterator[_Proposal]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from synth import circuit
 from synth.approximation import PolePair
@@ -11,6 +11,7 @@ from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import choose_section_circuit
 from synth.planning.partition import Partition, orders
+from synth.planning.reference import choose_references, reference_caution
 from synth.rounding import Section, gain_draft, round_section, trim_chain
 from synth.spec import Spec
 from synth.topology.place import Draft, Stocks, Surroundings, place
@@ -30,6 +31,14 @@ class Workshop:
     rounded: dict[tuple[str, str, StageTarget], Section] = field(default_factory=dict)
 
 
+@dataclass(frozen=True, slots=True)
+class BuiltChain:
+    """A chain and what its making has to say to the person."""
+
+    chain: Chain
+    notes: tuple[str, ...] = ()
+
+
 def surroundings(spec: Spec) -> Surroundings:
     """What a chain for the spec stands between."""
     target = spec.target
@@ -38,7 +47,7 @@ def surroundings(spec: Spec) -> Surroundings:
     )
 
 
-def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> Chain:
+def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> BuiltChain:
     """Stages on the stocked grid, in the first order whose amplifiers carry all voltages, the gain trimmed.
 
     Raises:
@@ -58,8 +67,12 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     assert best is not None
     places = [k for k, draft in enumerate(best[1]) if draft.topology.kind == "bandpass"]
     variants = {k: section.variants for k, section in zip(places, sections, strict=True)}
+    note = ""
+    if shop.spec.supply.negative is None:
+        mended = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
+        around, note = replace(around, references=mended.references), reference_caution(mended)
     trimmed = trim_chain(best[1], variants, shop.stocks, around, shop.spec.overall_gain)
-    return place(trimmed, shop.stocks, around)
+    return BuiltChain(place(trimmed, shop.stocks, around), (note,) if note else ())
 
 
 def _sections(shop: Workshop, pairs: Sequence[PolePair], section_gain: float) -> tuple[Section, ...]:

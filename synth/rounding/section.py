@@ -102,11 +102,11 @@ def _capacitor_pairs(trial: Trial, op_amp: OpAmp) -> dict[str, FloatArray]:
         resistors.update(trial.topology.solve(f, q, gain, {**pairs, **resistors}))
         keep = _within_stock(resistors, trial)
     if not keep.any():
-        grid = trial.stocks.resistors.values
+        low, high = (format_si(float(r), "ohm") for r in trial.stocks.resistors.values[[0, -1]])
         raise InfeasibleError(
             f"no stocked capacitors make {format_si(trial.frequency, 'Hz')} at Q {trial.q:.3g} in a "
-            f"{trial.topology.title} section with {op_amp.type} and resistors between "
-            f"{format_si(float(grid[0]), 'ohm')} and {format_si(float(grid[-1]), 'ohm')}; allow a wider bandwidth or stock other capacitors"
+            f"{trial.topology.title} section with {op_amp.type} and resistors between {low} and {high}; "
+            "allow a wider bandwidth or stock other capacitors"
         )
     return {key: values[keep] for key, values in pairs.items()}
 

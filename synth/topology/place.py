@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+import math
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
 
 from synth.circuit import OUTPUT, TERMINAL
 from synth.model.chain import Chain, Stage, StageTarget
@@ -11,6 +12,7 @@ from synth.model.part import GROUND, OpAmp, Part
 from synth.parts.passives import CapacitorStock, CouplingStock, ResistorStock
 from synth.spec import Sensor
 from synth.topology.base import Slot, Topology
+from synth.topology.reference import REFERENCE, SUPPLY
 
 
 @dataclass(frozen=True, slots=True)
@@ -24,69 +26,119 @@ class Stocks:
 
 @dataclass(frozen=True, slots=True)
 class Draft:
-    """A stage on paper: its topology, what is asked of it, its amplifiers' type and the value of each passive slot."""
+    """A stage on paper: topology, target, its amplifiers' type (None: it has none), passive values by slot."""
 
     topology: Topology
     target: StageTarget
-    op_amp: OpAmp
+    op_amp: OpAmp | None
+    values: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
+class Reference:
+    """The mid-rail of a single supply on paper; `op_amp` None where it has no follower."""
+
+    topology: Topology
+    op_amp: OpAmp | None
     values: Mapping[str, float]
 
 
 @dataclass(frozen=True, slots=True)
 class Surroundings:
-    """What the chain stands between."""
+    """What the chain stands between.
+
+    Attributes:
+        center_frequency: [Hz]; ambient: [degC].
+        sensor: as asked.
+        load_resistance: [ohm] or None; load_capacitance: [F].
+        references: mid-rails of a single supply, the stages shared out among them in order; () on a dual supply.
+    """
 
     center_frequency: float
     ambient: float
     sensor: Sensor
     load_resistance: float | None
     load_capacitance: float
+    references: tuple[Reference, ...] = ()
 
 
 def place(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> Chain:
-    """The chain of parts: stages in order, references counted along it, the last output named `out`."""
-    amplifiers = iter(
-        amplifier_references([d.op_amp for d in drafts for slot in d.topology.slots if slot.kind == "op-amp"])
-    )
-    counts = {"resistor": 0, "capacitor": 0, "gain": 0, "bandpass": 0}
-    parts: list[Part] = []
-    stages: list[Stage] = []
+    """The chain of parts: references first, stages in order, designators counted along it, the last output `out`."""
+    builder = _Builder(stocks, around, _amplifiers(drafts, around.references))
+    share = max(1, math.ceil(len(drafts) / max(1, len(around.references))))
+    for k, reference in enumerate(around.references):
+        op_amp = reference.op_amp.type if reference.op_amp else ""
+        draft = Draft(reference.topology, StageTarget(0.0), reference.op_amp, reference.values)
+        builder.add(draft, op_amp, "0", _reference_node(k), GROUND)
     node = TERMINAL
     for k, draft in enumerate(drafts):
-        kind = draft.topology.kind
-        counts[kind] += 1
-        name = f"{kind} {counts[kind]}"
+        assert draft.op_amp is not None
         following = OUTPUT if k == len(drafts) - 1 else f"n{k + 1}"
-        refs = []
-        for slot in draft.topology.slots:
-            nodes = tuple(_node(local, node, following, k + 1) for local in slot.nodes)
-            if slot.kind == "op-amp":
-                part = _op_amp(next(amplifiers), name, slot, nodes, draft.op_amp)
-            else:
-                counts[slot.kind] += 1
-                ref = f"{'R' if slot.kind == 'resistor' else 'C'}{counts[slot.kind]}"
-                part = _passive(ref, name, slot, nodes, draft.values[slot.key], stocks, around.center_frequency)
-            parts.append(part)
-            refs.append(part.ref)
-        stages.append(
-            Stage(name, kind, draft.topology.name, draft.target, draft.op_amp.type, node, following, tuple(refs))
-        )
+        ground = _reference_node(k // share) if around.references else GROUND
+        builder.add(draft, draft.op_amp.type, node, following, ground)
         node = following
-    models = {draft.op_amp.type: draft.op_amp for draft in drafts}
+    op_amps = [d.op_amp for d in drafts] + [r.op_amp for r in around.references]
+    models = {op_amp.type: op_amp for op_amp in op_amps if op_amp is not None}
     return Chain(
         around.center_frequency,
         around.ambient,
         around.sensor,
         around.load_resistance,
         around.load_capacitance,
-        tuple(stages),
-        tuple(parts),
+        tuple(builder.stages),
+        tuple(builder.parts),
         dict(sorted(models.items())),
     )
 
 
-def _node(local: str, before: str, after: str, number: int) -> str:
-    return {"in": before, "out": after, GROUND: GROUND}.get(local, f"s{number}{local}")
+def _reference_node(number: int) -> str:
+    return REFERENCE if number == 0 else f"{REFERENCE}{number + 1}"
+
+
+def _amplifiers(drafts: Sequence[Draft], references: Sequence[Reference]) -> Iterator[str]:
+    """Designators of all op amps, in the order in which the stages are placed."""
+    placed = [(r.topology, r.op_amp) for r in references] + [(d.topology, d.op_amp) for d in drafts]
+    each = [
+        op_amp for topology, op_amp in placed for slot in topology.slots if slot.kind == "op-amp" and op_amp is not None
+    ]
+    return iter(amplifier_references(each))
+
+
+@dataclass(slots=True)
+class _Builder:
+    """Counts designators and collects parts and stages."""
+
+    stocks: Stocks
+    around: Surroundings
+    amplifiers: Iterator[str]
+    parts: list[Part] = field(default_factory=list)
+    stages: list[Stage] = field(default_factory=list)
+    counts: dict[str, int] = field(default_factory=dict)
+
+    def count(self, what: str) -> int:
+        self.counts[what] = self.counts.get(what, 0) + 1
+        return self.counts[what]
+
+    def add(self, draft: Draft, op_amp: str, before: str, after: str, ground: str) -> None:
+        kind = draft.topology.kind
+        name = f"{kind} {self.count(kind)}"
+        local = {"in": before, "out": after, "0": ground, "gnd": GROUND, SUPPLY: SUPPLY}
+        prefix = f"s{len(self.stages) + 1}"
+        refs = []
+        for slot in draft.topology.slots:
+            nodes = tuple(local.get(node, prefix + node) for node in slot.nodes)
+            if slot.kind == "op-amp":
+                assert draft.op_amp is not None
+                part = _op_amp(next(self.amplifiers), name, slot, nodes, draft.op_amp)
+            else:
+                ref = f"{'R' if slot.kind == 'resistor' else 'C'}{self.count(slot.kind)}"
+                value = draft.values[slot.key]
+                part = _passive(ref, name, slot, nodes, value, self.stocks, self.around.center_frequency)
+            self.parts.append(part)
+            refs.append(part.ref)
+        self.stages.append(
+            Stage(name, kind, draft.topology.name, draft.target, op_amp, before, after, tuple(refs))
+        )
 
 
 def amplifier_references(op_amps: Sequence[OpAmp]) -> tuple[str, ...]:

@@ -40,7 +40,7 @@ def verify(chain: Chain, spec: Spec) -> Verification:
         *derived(found, margins, band),
         *not_judged(spec),
     )
-    stages = _stage_results(chain, network, band, found, margins)
+    stages = _stage_results(chain, network, band, found, margins, spec.target.full_scale)
     model = sensor_model(chain)
     return Verification(table, noise, band, model, stages, requirements, cautions(spec, chain))
 
@@ -64,6 +64,7 @@ def _stage_results(
     band: Realized,
     found: tuple[Excursion, ...],
     margins: tuple[circuit.Margin, ...],
+    full_scale: float,
 ) -> tuple[StageResult, ...]:
     voltages = circuit.node_voltages(network, [chain.center_frequency])[0]
     index = {node: k for k, node in enumerate(network.unknowns)}
@@ -72,6 +73,9 @@ def _stage_results(
     pairs = match_pairs(chain, band)
     results = []
     for stage in chain.stages:
+        if stage.kind == "reference":
+            results.append(_reference_result(stage, voltages[index[stage.output_node]], full_scale, margin))
+            continue
         ratio = voltages[index[stage.output_node]] / voltages[index[stage.input_node]]
         refs = [r for r in stage.parts if chain.part(r).kind == "op-amp"]
         fullest = max(refs, key=lambda r: excursion[r].peak)
@@ -90,6 +94,16 @@ def _stage_results(
             )
         )
     return tuple(results)
+
+
+def _reference_result(
+    stage: Stage, voltage: complex, full_scale: float, margin: dict[str, circuit.Margin]
+) -> StageResult:
+    """A mid-rail has no gain; its level is what the stages leave on it at full scale."""
+    level = float(abs(voltage)) * full_scale
+    loop = next((margin[ref] for ref in stage.parts if ref in margin), None)
+    phase = loop.phase_margin if loop is not None and loop.crossing is not None else None
+    return StageResult(stage.name, 0.0, None, None, level, math.sqrt(2) * level, phase)
 
 
 def match_pairs(chain: Chain, band: Realized) -> dict[str, tuple[float, float]]:

@@ -1,0 +1,118 @@
+"""The mid-rail reference of a single supply: the simplest that costs the chain's gain less than its share."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
+
+from synth import circuit
+from synth.errors import InfeasibleError
+from synth.model.chain import Chain
+from synth.model.part import OpAmp
+from synth.planning.amplifiers import DEFAULT_ACCURACY
+from synth.quantity import format_si
+from synth.rounding import chain_gain
+from synth.spec import Spec
+from synth.topology.place import Draft, Reference, Stocks, Surroundings, place
+from synth.topology.reference import BUFFERED, DIVIDER, FOLLOWER
+
+SHARE = 0.1  # of the accuracy, that the reference may take
+DIVIDER_RESISTANCE = 10e3  # [ohm] each half
+ISOLATION = 10.0  # [ohm] keeps a follower stable into its decoupling
+BARE = (10e3, 10e-6)  # the divider and decoupling that are shown for comparison
+MOST_REFERENCES = 3
+
+
+@dataclass(frozen=True, slots=True)
+class Mended:
+    """References chosen, what they cost the gain (relative, at the centre), and what a bare divider would cost."""
+
+    references: tuple[Reference, ...]
+    cost: float
+    bare_cost: float
+    bare_stable: bool
+
+
+def choose_references(
+    spec: Spec, drafts: Sequence[Draft], op_amps: tuple[OpAmp, ...], stocks: Stocks, around: Surroundings
+) -> Mended:
+    """The simplest reference whose loop costs less than its share, tried on the exact circuit.
+
+    A bare divider first, then a follower with its own decoupling, then separate followers for early and late stages.
+
+    Raises:
+        InfeasibleError: none stays inside the share.
+    """
+    accuracy = spec.target.accuracy if spec.target.accuracy is not None else DEFAULT_ACCURACY
+    ideal = chain_gain(place(drafts, stocks, around))
+    bare = _cost(replace(around, references=(_divider(stocks, BARE[1]),)), drafts, stocks, ideal)
+    best = math.inf
+    for references in _options(spec, drafts, op_amps, stocks):
+        cost, stable = _cost(replace(around, references=references), drafts, stocks, ideal)
+        if stable and cost <= SHARE * accuracy:
+            return Mended(references, cost, *bare)
+        best = min(best, cost) if stable else best
+    found = "none of them is stable" if math.isinf(best) else f"the best costs {100 * best:.2g} % of gain"
+    raise InfeasibleError(
+        f"{spec.source}: supply.negative left out: no mid-rail reference keeps its loop within "
+        f"{100 * SHARE * accuracy:.2g} %, {found}; give a dual supply, less gain or a looser target.accuracy"
+    )
+
+
+def _options(
+    spec: Spec, drafts: Sequence[Draft], op_amps: tuple[OpAmp, ...], stocks: Stocks
+) -> Iterator[tuple[Reference, ...]]:
+    values = stocks.coupling.values
+    yield (_divider(stocks, float(values[-1])),)
+    followers = [a for a in op_amps if a.minimum_noise_gain <= 1]
+    if not followers:
+        return
+    center = spec.target.center_frequency
+    fast = [a for a in followers if a.gain_bandwidth >= 10 * center] or followers
+    frugal = min(fast, key=lambda a: (a.supply_current, a.type))
+    used = {draft.op_amp.type for draft in drafts if draft.op_amp is not None}
+    low = min(fast, key=lambda a: (a.type not in used, a.output_resistance / a.gain_bandwidth, a.type))
+    for count in range(1, MOST_REFERENCES + 1):
+        yield (_buffered(stocks, frugal, float(values[-1])),) * count
+        yield (_follower(stocks, low, float(values[-1])),) * count
+
+
+def _divider(stocks: Stocks, capacitance: float) -> Reference:
+    each = _stocked(stocks, DIVIDER_RESISTANCE)
+    return Reference(DIVIDER, None, {"RT": each, "RB": each, "CD": capacitance})
+
+
+def _buffered(stocks: Stocks, follower: OpAmp, capacitance: float) -> Reference:
+    each, isolation = _stocked(stocks, DIVIDER_RESISTANCE), _stocked(stocks, ISOLATION)
+    values = {"RT": each, "RB": each, "CD": capacitance, "RO": isolation, "CO": capacitance}
+    return Reference(BUFFERED, follower, values)
+
+
+def _follower(stocks: Stocks, op_amp: OpAmp, capacitance: float) -> Reference:
+    each = _stocked(stocks, DIVIDER_RESISTANCE)
+    return Reference(FOLLOWER, op_amp, {"RT": each, "RB": each, "CD": capacitance})
+
+
+def _stocked(stocks: Stocks, value: float) -> float:
+    return float(min(stocks.resistors.values, key=lambda v: (abs(math.log(v / value)), v)))
+
+
+def _cost(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks, ideal: float) -> tuple[float, bool]:
+    """Relative change of the gain at the centre by the references, and whether the whole is stable with them."""
+    chain: Chain = place(drafts, stocks, around)
+    stable = circuit.is_stable(circuit.poles(circuit.build_network(chain), chain.center_frequency))
+    return abs(chain_gain(chain) / ideal - 1), stable
+
+
+def reference_caution(found: Mended) -> str:
+    """What the references do and what a bare divider would do, in words."""
+    kind = found.references[0].topology.title
+    if len(found.references) > 1:
+        kind = f"{len(found.references)} separate references, each a {kind}"
+    bare = f"{format_si(BARE[0], 'ohm')}/{format_si(BARE[1], 'F')} divider"
+    if not found.bare_stable:
+        effect = "would make the chain oscillate"
+    else:
+        effect = f"would change the gain by {100 * found.bare_cost:.2g} %"
+    return f"mid-rail: {kind}, changes the gain at the centre by {100 * found.cost:.2g} %; a bare {bare} {effect}"
