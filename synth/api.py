@@ -160,7 +160,10 @@ def check(given: Design | Path | str) -> Design:
         given: a design, or the folder of one.
     """
     old = given if isinstance(given, Design) else load_design(given)
-    return replace(old, record=replace(old.record, verification=verify(old.chain, old.spec)))
+    verdict = verify(old.chain, old.spec)
+    if not old.edited:  # what the planner had to say still holds
+        verdict = replace(verdict, cautions=old.verification.cautions)
+    return replace(old, record=replace(old.record, verification=verdict))
 
 
 def load_design(path: Path | str) -> Design:

@@ -8,10 +8,11 @@ from synth.circuit.analysis import (
     integrated,
     node_voltages,
     noise,
+    resistances,
     response,
     response_and_delay,
 )
-from synth.circuit.assemble import INPUT, OUTPUT, TERMINAL, Drawn, build_network, build_values
+from synth.circuit.assemble import INPUT, INPUT_TRANSCONDUCTANCE, OUTPUT, TERMINAL, Drawn, build_network, build_values
 from synth.circuit.batch import batch_response
 from synth.circuit.loop import Margin, phase_margin, return_ratio
 from synth.circuit.modes import is_stable, poles, resonant_pairs, zeros
@@ -20,6 +21,7 @@ from synth.circuit.network import ZERO_CELSIUS, Network
 
 __all__ = [
     "INPUT",
+    "INPUT_TRANSCONDUCTANCE",
     "OUTPUT",
     "TERMINAL",
     "ZERO_CELSIUS",
@@ -39,6 +41,7 @@ __all__ = [
     "noise",
     "phase_margin",
     "poles",
+    "resistances",
     "resonant_pairs",
     "response",
     "response_and_delay",

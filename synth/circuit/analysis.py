@@ -80,6 +80,14 @@ def injected_voltages(network: Network, node: str, frequencies: ArrayLike) -> Co
     return solve(Y, into / scale)
 
 
+def resistances(network: Network, frequencies: ArrayLike) -> ComplexArray:
+    """Voltage of every node (row) for one ampere into every node (column), the input at rest [ohm], (F, n, n)."""
+    m = matrices(network)
+    Y, scale = scaled_systems(m, frequency_array(frequencies))
+    columns = [solve(Y, np.eye(len(m.nodes))[k] / scale) for k in range(len(m.nodes))]
+    return np.stack(columns, axis=2)
+
+
 def response_and_delay(network: Network, frequencies: ArrayLike) -> tuple[ComplexArray, FloatArray]:
     """Response [V per input unit] and group delay -d(phase)/d(omega) [s], both of shape (F,).
 

@@ -83,7 +83,7 @@ def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexAr
         failed += [chunk.start + int(k) for k in np.flatnonzero(bad)]
     if failed:
         numerator, determinant = _evaluate(program, values[:, failed], f[where])
-        out[np.ix_(where, failed)] = numerator / determinant
+        out[np.ix_(where, np.array(failed))] = numerator / determinant
 
 
 def _interpolated(

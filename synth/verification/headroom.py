@@ -1,4 +1,4 @@
-"""Largest voltages inside the chain: full scale plus every interference in the worst phase."""
+"""Largest voltages inside the chain: full scale plus every interference in the worst phase, on top of DC."""
 
 from __future__ import annotations
 
@@ -13,6 +13,7 @@ from synth.model.chain import Chain
 from synth.model.part import Part
 from synth.spec import Interference, Spec
 
+NEARLY_DC = 1e-6  # of the centre
 RAMP = 0.8  # a linear edge spends this share of its length between 10 and 90 %
 
 
@@ -21,13 +22,14 @@ class Excursion:
     """What one amplifier's output must carry.
 
     Attributes:
-        ref: of the amplifier; peak: [V] at its output; allowed: [V] its swing; slew: [V/s] needed;
+        ref: of the amplifier; peak: [V] at its output, DC included; allowed: [V] its swing; slew: [V/s] needed;
         slew_allowed: [V/s]; input_peak: [V] at its non-inverting input; input_allowed: [V].
-        level: [V] rms of the full-scale signal alone.
+        level: [V] rms of the full-scale signal alone; dc: [V] largest, offsets and bias currents adding up.
     """
 
     ref: str
     level: float
+    dc: float
     peak: float
     allowed: float
     slew: float
@@ -62,14 +64,34 @@ def excursions(chain: Chain, network: circuit.Network, spec: Spec) -> tuple[Excu
         voltages.append(_node_response(network, interference, f) * amplitude[:, None])
     f = np.concatenate(frequencies)
     peaks: FloatArray = np.abs(np.concatenate(voltages))
+    dc = dc_voltages(chain, network)
     index = {node: k for k, node in enumerate(network.unknowns)}
     found = []
     for part in chain.parts:
         if part.kind == "op-amp":
             plus, _, out = part.nodes
-            at_plus = peaks[:, index[plus]] if plus in index else np.zeros(f.size)
-            found.append(_excursion(chain, part, spec, f, peaks[:, index[out]], at_plus))
+            at_plus = peaks[:, index[plus]].sum() + dc[index[plus]] if plus in index else 0.0
+            found.append(_excursion(chain, part, spec, f, peaks[:, index[out]], dc[index[out]], at_plus))
     return tuple(found)
+
+
+def dc_voltages(chain: Chain, network: circuit.Network) -> FloatArray:
+    """Largest DC voltage of every node by offset voltages and bias currents, all adding up [V], shape (nodes,).
+
+    An offset stands at an amplifier's input as its noise does; taken at a frequency far below every corner.
+    """
+    f = np.array([chain.center_frequency * NEARLY_DC])
+    effect = np.abs(circuit.resistances(network, f)[0])  # [ohm], from each node (column) to each (row)
+    index = {node: k for k, node in enumerate(network.unknowns)}
+    total = np.zeros(len(index))
+    for part in chain.parts:
+        if part.kind == "op-amp":
+            model = chain.models[str(part.value)]
+            total += effect[:, index[f"{part.ref}_p"]] * circuit.INPUT_TRANSCONDUCTANCE * model.offset_voltage_max
+            for node in part.nodes[:2]:
+                if node in index:
+                    total += effect[:, index[node]] * model.bias_current
+    return total
 
 
 def _node_response(network: circuit.Network, interference: Interference, f: FloatArray) -> ComplexArray:
@@ -81,18 +103,19 @@ def _node_response(network: circuit.Network, interference: Interference, f: Floa
 
 
 def _excursion(
-    chain: Chain, part: Part, spec: Spec, f: FloatArray, peaks: FloatArray, at_plus: FloatArray
+    chain: Chain, part: Part, spec: Spec, f: FloatArray, peaks: FloatArray, dc: float, at_plus: float
 ) -> Excursion:
     model = chain.models[str(part.value)]
     high, low = rails(spec)
     return Excursion(
         part.ref,
         float(peaks[0] / math.sqrt(2)),
-        float(peaks.sum()),
+        float(dc),
+        float(peaks.sum() + dc),
         min(high - model.swing_headroom_high, low - model.swing_headroom_low),
         float((2 * np.pi * f * peaks).sum()),
         model.slew_rate,
-        float(at_plus.sum()),
+        float(at_plus),
         min(high - model.common_mode_headroom_high, low - model.common_mode_headroom_low),
     )
 
