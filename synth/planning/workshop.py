@@ -12,7 +12,7 @@ from synth.model.part import OpAmp
 from synth.planning.amplifiers import choose_section_circuit
 from synth.planning.partition import Partition, orders
 from synth.planning.reference import choose_references, reference_caution
-from synth.rounding import Section, gain_draft, round_section, trim_chain
+from synth.rounding import Section, damped, gain_draft, round_section, trim_chain
 from synth.spec import Spec
 from synth.topology.place import Draft, Stocks, Surroundings, place
 from synth.verification.headroom import excursions
@@ -98,7 +98,10 @@ def _gains(shop: Workshop, split: Partition) -> tuple[Draft, ...]:
         factor = 1 / shop.attenuation if k == len(split.gains) - 1 else 1.0
         source = (spec.sensor.resistance or 0.0) if k == 0 else 0.0
         center, ambient = spec.target.center_frequency, spec.environment.ambient
-        drafts.append(gain_draft(StageTarget(gain, factor), op_amp, shop.stocks, center, ambient, source))
+        draft = gain_draft(StageTarget(gain, factor), op_amp, shop.stocks, center, ambient, source)
+        if k == 0 and spec.sensor.inductance is not None:
+            draft = damped(draft, spec.sensor.inductance, shop.stocks)
+        drafts.append(draft)
     return tuple(drafts)
 
 

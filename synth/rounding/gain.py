@@ -58,6 +58,18 @@ def gain_draft(
     return Draft(non_inverting.TOPOLOGY, target, op_amp, chosen)
 
 
+def damped(draft: Draft, inductance: float, stocks: Stocks) -> Draft:
+    """The gain stage with a damper across its input, for a source of some inductance [H]."""
+    assert draft.op_amp is not None
+    resistor, capacitor = non_inverting.damper(inductance, draft.op_amp)
+    values, capacitors = stocks.resistors.values, stocks.coupling.values
+    chosen = {
+        "RD": float(values[np.argmin(np.abs(np.log(values / resistor)))]),
+        "CD": float(capacitors[np.argmin(np.abs(np.log(capacitors / capacitor)))]),
+    }
+    return replace(draft, topology=non_inverting.DAMPED, values={**draft.values, **chosen})
+
+
 def bias_resistor(gain: float, op_amp: OpAmp, stocks: Stocks, source_resistance: float) -> float:
     """Bias resistor [ohm]: as large as the bias current allows, and large against the source."""
     largest = min(DC_SHARE / (op_amp.bias_current * gain), BIAS_RANGE[1])

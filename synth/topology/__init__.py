@@ -6,6 +6,6 @@ from synth.topology import multiple_feedback, non_inverting
 from synth.topology.base import SectionTopology, Slot, Topology
 
 SECTIONS: dict[str, SectionTopology] = {t.name: t for t in (multiple_feedback.TOPOLOGY,)}
-GAINS: dict[str, Topology] = {t.name: t for t in (non_inverting.TOPOLOGY,)}
+GAINS: dict[str, Topology] = {t.name: t for t in (non_inverting.TOPOLOGY, non_inverting.DAMPED)}
 
 __all__ = ["GAINS", "SECTIONS", "SectionTopology", "Slot", "Topology", "multiple_feedback", "non_inverting"]

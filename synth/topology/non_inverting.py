@@ -5,6 +5,7 @@
                |
               gnd                 gain 1 + RF/RG; the coupling passes above 1/(2 pi RB CC)
 
+With an inductive source a series RD, CD from (+) to ground damps its resonance with the input capacitance.
 RB is the DC path of the input's bias current.  The closed-loop gain with a finite loop gain T is
 (1 + RF/RG) T/(1 + T).
 
@@ -16,6 +17,7 @@ from __future__ import annotations
 
 import math
 
+from synth.model.part import OpAmp
 from synth.topology.base import Slot, Topology
 
 TOPOLOGY = Topology(
@@ -32,6 +34,31 @@ TOPOLOGY = Topology(
     sign=1,
     source="Franco, 3rd ed., sec. 1.3",
 )
+
+
+DAMPED = Topology(
+    name="non-inverting-damped",
+    title="AC-coupled non-inverting gain, input damped",
+    kind="gain",
+    slots=(
+        *TOPOLOGY.slots[:2],
+        Slot("RD", "resistor", "damps the source's inductance", ("p", "d")),
+        Slot("CD", "capacitor", "keeps the damping off the signal", ("d", "0")),
+        *TOPOLOGY.slots[2:],
+    ),
+    sign=1,
+    source="Franco, 3rd ed., sec. 1.3; the damper is common practice, no source",
+)
+
+
+def damper(inductance: float, op_amp: OpAmp) -> tuple[float, float]:
+    """Series resistor [ohm] and capacitor [F] across an input fed by an inductive source.
+
+    The source's inductance resonates with the input capacitance Ci far above the signal, where the input of a
+    feedback amplifier can be a negative resistance; sqrt(L/Ci) behind ten times Ci holds it (common practice).
+    """
+    input_capacitance = op_amp.input_capacitance_differential + op_amp.input_capacitance_common
+    return math.sqrt(inductance / input_capacitance), 10 * input_capacitance
 
 
 def magnitude(gain: float, frequency: float, gain_bandwidth: float, dc_gain: float) -> float:
