@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import hashlib
 import logging
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -13,7 +14,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from synth import circuit, folder
-from synth.errors import SpecError
+from synth.errors import CatalogError, CircuitError, InfeasibleError, SpecError
 from synth.model.chain import Chain
 from synth.model.judgement import Requirement, Verification
 from synth.model.record import DesignRecord
@@ -122,8 +123,10 @@ def design(spec: Spec, seed: int = 0) -> Design:
         True
     """
     entries = load_op_amps(spec.catalog_files)
-    chosen = select(spec.parts.op_amps, entries) if spec.parts.op_amps else tuple(entries.values())
-    found = plan(spec, tuple(entry.op_amp for entry in chosen), stocks_for(spec))
+    with _naming(spec, "parts.op_amps: "):
+        chosen = select(spec.parts.op_amps, entries) if spec.parts.op_amps else tuple(entries.values())
+    with _naming(spec):
+        found = plan(spec, tuple(entry.op_amp for entry in chosen), stocks_for(spec))
     log.info("chosen: %s", found.candidates[0].description)
     record = DesignRecord(
         spec, seed, _digests(spec), found.chain, found.family, found.order, found.verification, found.candidates
@@ -131,20 +134,31 @@ def design(spec: Spec, seed: int = 0) -> Design:
     return Design(record)
 
 
+@contextmanager
+def _naming(spec: Spec, key: str = "") -> Iterator[None]:
+    """Put the spec's name, and a key, in front of an error that does not name the file."""
+    try:
+        yield
+    except (CatalogError, CircuitError, InfeasibleError) as error:
+        if spec.source in str(error):
+            raise
+        raise type(error)(f"{spec.source}: {key}{error}") from error
+
+
 def stocks_for(spec: Spec) -> Stocks:
     """The resistors and capacitors that a spec allows."""
     resistors, capacitors, extra = spec.parts.resistors, spec.parts.capacitors, spec.catalog_files
-    return Stocks(
-        resistor_stock(resistors.series, resistors.tolerance, resistors.temperature_coefficient, extra=extra),
-        capacitor_stock(
+    with _naming(spec, "parts.resistors: "):
+        ohms = resistor_stock(resistors.series, resistors.tolerance, resistors.temperature_coefficient, extra=extra)
+    with _naming(spec, "parts.capacitors: "):
+        farads = capacitor_stock(
             capacitors.series,
             capacitors.tolerance,
             capacitors.temperature_coefficient,
             capacitors.dielectric,
             extra=extra,
-        ),
-        coupling_stock(extra=extra),
-    )
+        )
+    return Stocks(ohms, farads, coupling_stock(extra=extra))
 
 
 def _digests(spec: Spec) -> dict[str, str]:

@@ -106,8 +106,8 @@ def section_circuits(
 
 def _spread_score(spec: Spec, op_amp: OpAmp, q: float, topology: SectionTopology) -> float | None:
     """Worst effect of the amplifier's spreads over what is tolerated; None where the amplifier cannot do it."""
-    if op_amp.minimum_noise_gain > 1 or _unity_margin(op_amp) < UNITY_MARGIN:
-        return None  # the loops are closed by capacitors: unity noise gain at high frequency
+    if not suits_sections(op_amp):
+        return None
     center = spec.target.center_frequency
     shift, stretch = (abs(x) for x in topology.shift(q, center / op_amp.gain_bandwidth))
     loss = abs(topology.loss(q, op_amp.dc_gain))
@@ -132,8 +132,10 @@ def section_noise(op_amp: OpAmp, frequency: float, q: float, topology: SectionTo
     return input_noise(op_amp, frequency, reactance) * topology.noise_gain(q) / (2 * q)
 
 
-def _unity_margin(op_amp: OpAmp) -> float:
-    return phase_margin(op_amp.gain_bandwidth, op_amp.dc_gain, op_amp.second_pole, 1.0)
+def suits_sections(op_amp: OpAmp) -> bool:
+    """Stable at unity gain: the loops of a section are closed by capacitors at high frequency."""
+    margin = phase_margin(op_amp.gain_bandwidth, op_amp.dc_gain, op_amp.second_pole, 1.0)
+    return op_amp.minimum_noise_gain <= 1 and margin >= UNITY_MARGIN
 
 
 def choose_section_circuit(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> SectionCircuit:
@@ -146,7 +148,7 @@ def choose_section_circuit(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> 
     found = section_circuits(spec, op_amps, q, topologies)
     if found:
         return found[0]
-    stable = [a for a in op_amps if a.minimum_noise_gain <= 1 and _unity_margin(a) >= UNITY_MARGIN]
+    stable = [a for a in op_amps if suits_sections(a)]
     if not stable:
         raise InfeasibleError(
             f"{spec.source}: parts.op_amps: a bandpass section needs an amplifier that is stable at unity gain; "

@@ -10,6 +10,8 @@ from synth import circuit
 from synth.circuit.sensor import sensor_network
 from synth.errors import InfeasibleError
 from synth.model.part import OpAmp
+from synth.planning.amplifiers import suits_sections
+from synth.planning.safe import at_least, at_most
 from synth.quantity import format_si
 from synth.spec import Spec
 from synth.topology import SECTIONS
@@ -49,14 +51,13 @@ def usable_op_amps(spec: Spec, op_amps: tuple[OpAmp, ...]) -> tuple[OpAmp, ...]:
     high, low = rails(spec)
     total = high + low
     on_supply = tuple(a for a in op_amps if a.supply_minimum <= total <= a.supply_maximum)
-    if not on_supply:
-        nearest = min(op_amps, key=lambda a: max(a.supply_minimum - total, total - a.supply_maximum))
-        bound = nearest.supply_minimum if total < nearest.supply_minimum else nearest.supply_maximum
+    peak = math.sqrt(2) * spec.full_scale_output
+    suited = tuple(a for a in op_amps if suits_sections(a)) or op_amps
+    if not set(on_supply) & set(suited):
         raise InfeasibleError(
             f"{spec.source}: supply of {format_si(total, 'V')} in total is outside every amplifier's range; "
-            f"the nearest that works is {format_si(bound, 'V')} ({nearest.type})"
+            f"the nearest that works is {_nearest_supply(suited, total, peak)}"
         )
-    peak = math.sqrt(2) * spec.full_scale_output
     swings = {a.type: min(high - a.swing_headroom_high, low - a.swing_headroom_low) for a in on_supply}
     swinging = tuple(a for a in on_supply if swings[a.type] >= peak)
     if not swinging:
@@ -64,7 +65,7 @@ def usable_op_amps(spec: Spec, op_amps: tuple[OpAmp, ...]) -> tuple[OpAmp, ...]:
         raise InfeasibleError(
             f"{spec.source}: target.output of {format_si(spec.full_scale_output, 'V')} rms needs a swing of "
             f"{format_si(peak, 'V')} peak; on this supply the largest output that works is "
-            f"{format_si(max(swings[best.type], 0.0) / math.sqrt(2), 'V')} rms ({best.type})"
+            f"{format_si(at_most(max(swings[best.type], 0.0) / math.sqrt(2)), 'V')} rms ({best.type})"
         )
     slew = 2 * math.pi * spec.target.center_frequency * peak
     fast = tuple(a for a in swinging if a.slew_rate >= slew)
@@ -73,9 +74,24 @@ def usable_op_amps(spec: Spec, op_amps: tuple[OpAmp, ...]) -> tuple[OpAmp, ...]:
         raise InfeasibleError(
             f"{spec.source}: target.output of {format_si(spec.full_scale_output, 'V')} rms at "
             f"{format_si(spec.target.center_frequency, 'Hz')} slews {format_si(slew, 'V/s')}; the largest output that "
-            f"works is {format_si(spec.full_scale_output * best.slew_rate / slew, 'V')} rms ({best.type})"
+            f"works is {format_si(at_most(spec.full_scale_output * best.slew_rate / slew), 'V')} rms ({best.type})"
         )
     return fast
+
+
+def _nearest_supply(op_amps: tuple[OpAmp, ...], total: float, peak: float) -> str:
+    """The supply nearest a total [V] that an amplifier works on and swings a peak [V] on, rails alike."""
+    reach = []
+    for a in op_amps:
+        swing = 2 * (peak + max(a.swing_headroom_high, a.swing_headroom_low))
+        lowest = max(a.supply_minimum, swing)
+        if lowest <= a.supply_maximum:
+            bound = at_least(lowest) if total < lowest else at_most(a.supply_maximum)
+            reach.append((abs(bound - total), bound, a.type))
+    if not reach:
+        return "that of a smaller target.output"
+    _, bound, name = min(reach)
+    return f"{format_si(bound, 'V')} ({name})"
 
 
 def sensor_gain(spec: Spec) -> float:
@@ -111,6 +127,6 @@ def check_source_noise(spec: Spec) -> None:
         smallest = spec.target.smallest * 10 ** ((asked - best) / 20)
         raise InfeasibleError(
             f"{spec.source}: target.signal_to_noise of {asked:.4g} dB: the source's own noise allows at most "
-            f"{best:.3g} dB with a noiseless chain; ask for less, or raise target.smallest to "
-            f"{format_si(smallest, spec.input_unit)}, or narrow the bandwidth"
+            f"{at_most(best, 3):g} dB with a noiseless chain; ask for less, or raise target.smallest to "
+            f"{format_si(at_least(smallest), spec.input_unit)}, or narrow the bandwidth"
         )

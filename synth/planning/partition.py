@@ -11,6 +11,7 @@ from synth.circuit.network import BOLTZMANN, ZERO_CELSIUS
 from synth.errors import InfeasibleError
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import Fit, gain_candidates
+from synth.planning.safe import at_most
 from synth.quantity import format_si
 from synth.spec import Spec
 
@@ -55,12 +56,24 @@ def partitions(spec: Spec, op_amps: tuple[OpAmp, ...], gain: float, attenuation:
             found.append((fitting[0].noise, Partition((each,) * count, (fitting[0].op_amp,) * count, 1.0)))
     if not found:
         most = max(fit.largest_gain for fit in first) ** MOST_GAIN_STAGES
-        raise InfeasibleError(
-            f"{spec.source}: a voltage gain of {20 * math.log10(gain):.3g} dB is more than {MOST_GAIN_STAGES} stages "
-            f"carry; the most that works is {20 * math.log10(most):.3g} dB"
-        )
+        raise InfeasibleError(_too_much_gain(spec, gain, most))
     quiet = tuple(split for noise, split in found if noise <= allowed)
     return quiet or (min(found, key=lambda row: row[0])[1],)
+
+
+def _too_much_gain(spec: Spec, gain: float, most: float) -> str:
+    """The message where a voltage gain is more than the most that all gain stages carry."""
+    if spec.target.output is not None:
+        key, asked = "output", f"{format_si(spec.target.output, 'V')} rms"
+        works = f"{format_si(at_most(spec.target.output * most / gain), 'V')} rms"
+    else:
+        decibels = 20 * math.log10(spec.target.gain or 1.0)
+        key, asked = "gain", f"{decibels:.4g} dB"
+        works = f"{at_most(decibels + 20 * math.log10(most / gain)):g} dB"
+    return (
+        f"{spec.source}: target.{key} of {asked} needs {20 * math.log10(gain):.3g} dB of voltage gain, more than "
+        f"{MOST_GAIN_STAGES} stages carry; the largest {key} that works is {works}"
+    )
 
 
 def noise_allowance(spec: Spec, attenuation: float, quietest: float) -> float:
