@@ -7,10 +7,11 @@ from collections.abc import Iterator
 
 from synth import circuit
 from synth.model.judgement import NoiseTable, Realized, Requirement, ResponseTable
-from synth.quantity import format_si
+from synth.quantity import format_percent, format_si
 from synth.spec import Spec
 from synth.verification.figures import delay_variation, rejection, ripple
 from synth.verification.headroom import Excursion
+from synth.verification.settling import settling_time
 
 LEVEL_TOLERANCE = 0.01  # of the output at full scale, where the spec asks no accuracy
 PHASE_MARGIN = 45.0  # [degree] least of any amplifier's loop; common practice, no source
@@ -62,6 +63,10 @@ def judged(
     if target.group_delay_variation is not None:
         variation = delay_variation(network, center, target.bandwidth)
         yield limited("group delay variation", "s", variation, at_most=target.group_delay_variation)
+    if target.settling is not None:
+        within, to = target.settling.within, target.settling.to
+        settled = settling_time(network, center, target.bandwidth, within, to)
+        yield limited("settling", "s", settled, at_most=within, note=f"of the envelope, to {format_percent(to)}")
     if target.signal_to_noise is not None:
         note = "at the smallest reading"
         yield limited("signal to noise", "dB", noise.smallest_reading_snr_db, target.signal_to_noise, note=note)
@@ -93,8 +98,6 @@ def not_judged(spec: Spec) -> Iterator[Requirement]:
     for name, unit, value, note in asked:
         if value is not None:
             yield Requirement(name, unit, note=note)
-    if target.settling is not None:
-        yield Requirement("settling", "s", note="of the envelope after a step")
     sections = [
         ("interference", "", bool(spec.interference), "its part in the reading; its overload is judged"),
         ("temperature", "degC", spec.environment.temperature is not None, "figures are at ambient"),
