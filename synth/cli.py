@@ -138,6 +138,10 @@ def run(command: Callable[[], object]) -> int:
     except BrokenPipeError:
         sys.stderr.close()
         return MISSED
+    except OSError as error:  # files are the api's business: what is left is the terminal, or where it leads
+        typer.echo(f"synth: the output cannot be written: {error.strerror or error}", err=True)
+        sys.stdout = None  # what it still holds is not flushed once more
+        return UNUSABLE
     return MET
 
 
