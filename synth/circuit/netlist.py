@@ -14,6 +14,7 @@ import math
 from collections.abc import Mapping, Sequence
 
 from synth.circuit.network import ELEMENTARY_CHARGE, ZERO_CELSIUS, Element, Network, NoiseSource
+from synth.errors import CircuitError
 
 BIAS_VOLTAGE = 0.1  # [V] low, so that the bias current depends little on a simulator's constants
 SATURATION_CURRENT = 1e-6  # [A]
@@ -41,7 +42,11 @@ def netlist_text(
         comments: lines for the head, each made safe in the same way.
         center_frequency: [Hz].
         with_noise: False leaves the noise generators out, for timing the response alone.
+
+    Raises:
+        CircuitError: two names that a simulator takes for one, upper and lower case being the same to it.
     """
+    _check_names(network)
     low, high = _number(center_frequency / 1000), _number(center_frequency * 1000)
     lines = ["* analog signal chain, small-signal circuit with its noise", f"* {comment_text(title)}"]
     lines += [f"* {comment_text(text)}" for text in comments]
@@ -64,6 +69,23 @@ def netlist_text(
 def comment_text(text: str) -> str:
     """Text from outside as one short line of printable ASCII, safe in a comment."""
     return "".join(c if " " <= c <= "~" else "?" for c in text)[:WIDTH]
+
+
+def _check_names(network: Network) -> None:
+    """Refuse nodes and elements that a simulator would join: it knows no upper case, and `gnd` is its ground."""
+    generated = [f"{s.name}{end}" for s in network.noise for end in ("d1", "d2", "_r", "_rs", "_rd1", "_rd2")]
+    nodes = {name.lower(): name for name in ("0", network.input)}
+    nodes |= {name.lower(): f"{name} of the noise generators" for name in ("nbias", *generated)}
+    nodes["gnd"] = "ground, 0"
+    for node in network.unknowns:
+        if nodes.setdefault(node.lower(), node) != node:
+            raise CircuitError(f"node {node!r} is the same as {nodes[node.lower()]} to a simulator; rename it")
+    elements: dict[str, str] = {}
+    for element in network.elements:
+        line = _element_line(element).split()[0]
+        if elements.setdefault(line.lower(), element.name) != element.name:
+            other = elements[line.lower()]
+            raise CircuitError(f"{element.name} is the same as {other} to a simulator; rename one of them")
 
 
 def _number(value: float) -> str:

@@ -13,7 +13,7 @@ from pathlib import Path
 import pytest
 
 from synth import api, circuit
-from synth.errors import FolderError, SpecError
+from synth.errors import CircuitError, FolderError, SpecError
 from synth.output.bill import bill_csv
 from tests.spice.comparison import DEMO, Designs
 from tests.support.simulators import ngspice_program, run_ngspice, trouble
@@ -165,6 +165,27 @@ def test_an_identifier_is_no_more_than_one(designs: Designs, tmp_path: Path, nam
             continue
         fields = [line.split() for line in text.splitlines() if line[:1] in ("R", "C", "G")]
         assert all(len(one) == (6 if one[0].startswith("G") else 4) for one in fields), (key, name)
+
+
+@pytest.mark.parametrize("name", ["gnd", "GND", "nbias", "N1", "U1_end1", "IN"])
+def test_a_node_that_a_simulator_joins_with_another_gives_no_netlist(
+    designs: Designs, tmp_path: Path, name: str
+) -> None:
+    """To a simulator `gnd` is ground and N1 is n1; the engine keeps them apart, so no netlist would be the chain."""
+    source = designs.folder(DEMO)
+    assert source is not None
+    folder = tmp_path / "edited"
+    folder.mkdir()
+    (folder / "design.json").write_text((source / "design.json").read_text().replace('"s1m"', f'"{name}"'))
+    with pytest.raises(CircuitError, match="the same as .* to a simulator; rename it"):
+        api.netlist(api.load_design(folder))
+
+
+def test_elements_that_a_simulator_joins_give_no_netlist(demo: api.Design) -> None:
+    first, *others = demo.network().elements
+    network = replace(demo.network(), elements=(first, replace(first, name=first.name.upper()), *others))
+    with pytest.raises(CircuitError, match="the same as .* to a simulator; rename one of them"):
+        circuit.netlist_text(network, "title", (), 1e5)
 
 
 @pytest.mark.spice
