@@ -22,15 +22,16 @@ DIVIDER_RESISTANCE = 10e3  # [ohm] each half
 ISOLATION = 10.0  # [ohm] keeps a follower stable into its decoupling
 BARE = (10e3, 10e-6)  # the divider and decoupling that are shown for comparison
 MOST_REFERENCES = 3
+LARGE_CHANGE = 0.2  # of gain: shown in dB from here on
 
 
 @dataclass(frozen=True, slots=True)
 class Mended:
-    """References chosen, what they cost the gain (relative, at the centre), and what a bare divider would cost."""
+    """References chosen, and the gain at the centre over the ideal one: with them, and with a bare divider."""
 
     references: tuple[Reference, ...]
-    cost: float
-    bare_cost: float
+    ratio: float
+    bare_ratio: float
     bare_stable: bool
 
 
@@ -46,13 +47,13 @@ def choose_references(
     """
     accuracy = spec.target.accuracy if spec.target.accuracy is not None else DEFAULT_ACCURACY
     ideal = chain_gain(place(drafts, stocks, around))
-    bare = _cost(replace(around, references=(_divider(stocks, BARE[1]),)), drafts, stocks, ideal)
+    bare = _effect(replace(around, references=(_divider(stocks, BARE[1]),)), drafts, stocks, ideal)
     best = math.inf
     for references in _options(spec, drafts, op_amps, stocks):
-        cost, stable = _cost(replace(around, references=references), drafts, stocks, ideal)
-        if stable and cost <= SHARE * accuracy:
-            return Mended(references, cost, *bare)
-        best = min(best, cost) if stable else best
+        ratio, stable = _effect(replace(around, references=references), drafts, stocks, ideal)
+        if stable and abs(ratio - 1) <= SHARE * accuracy:
+            return Mended(references, ratio, *bare)
+        best = min(best, abs(ratio - 1)) if stable else best
     found = "none of them is stable" if math.isinf(best) else f"the best costs {100 * best:.2g} % of gain"
     raise InfeasibleError(
         f"{spec.source}: supply.negative left out: no mid-rail reference keeps its loop within "
@@ -98,11 +99,11 @@ def _stocked(stocks: Stocks, value: float) -> float:
     return float(min(stocks.resistors.values, key=lambda v: (abs(math.log(v / value)), v)))
 
 
-def _cost(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks, ideal: float) -> tuple[float, bool]:
-    """Relative change of the gain at the centre by the references, and whether the whole is stable with them."""
+def _effect(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks, ideal: float) -> tuple[float, bool]:
+    """Gain at the centre with the references over the ideal one, and whether the whole is stable with them."""
     chain: Chain = place(drafts, stocks, around)
     stable = circuit.is_stable(circuit.poles(circuit.build_network(chain), chain.center_frequency))
-    return abs(chain_gain(chain) / ideal - 1), stable
+    return chain_gain(chain) / ideal, stable
 
 
 def reference_caution(found: Mended) -> str:
@@ -111,8 +112,14 @@ def reference_caution(found: Mended) -> str:
     if len(found.references) > 1:
         kind = f"{len(found.references)} separate references, each a {kind}"
     bare = f"{format_si(BARE[0], 'ohm')}/{format_si(BARE[1], 'F')} divider"
+    effect = f"would change it by {_change(found.bare_ratio)}"
     if not found.bare_stable:
-        effect = "would make the chain oscillate"
-    else:
-        effect = f"would change the gain by {100 * found.bare_cost:.2g} %"
-    return f"mid-rail: {kind}, changes the gain at the centre by {100 * found.cost:.2g} %; a bare {bare} {effect}"
+        effect += " and make the chain oscillate"
+    return f"mid-rail: {kind}, changes the gain at the centre by {_change(found.ratio)}; a bare {bare} {effect}"
+
+
+def _change(ratio: float) -> str:
+    """A change of gain, in percent while small, in dB where not."""
+    if abs(ratio - 1) < LARGE_CHANGE:
+        return f"{100 * (ratio - 1):+.2g} %"
+    return f"{20 * math.log10(ratio):+.3g} dB"

@@ -31,6 +31,8 @@ scale = "50 uV/Pa"
 resistance = "200 ohm"
 [supply]
 positive = "12 V"
+[filter]
+sections = 2
 """
 pytestmark = pytest.mark.spice
 
@@ -75,10 +77,11 @@ def simulated_gain(chain: Chain, simulator: Simulator) -> float:
 
 
 def told_by_the_tool(made: synth.Design) -> tuple[float, float]:
-    """Cost of the reference chosen and of the bare divider, as the report says them, as fractions."""
+    """Gain over the ideal one with the reference chosen and with the bare divider, as the report says them."""
     caution = next(text for text in made.verification.cautions if text.startswith("mid-rail"))
-    chosen, bare = re.findall(r"by ([0-9.e+-]+) %", caution)
-    return float(chosen) / 100, float(bare) / 100
+    found = re.findall(r"by ([0-9.e+-]+) (%|dB)", caution)
+    chosen, bare = (1 + float(n) / 100 if unit == "%" else 10 ** (float(n) / 20) for n, unit in found)
+    return chosen, bare
 
 
 @pytest.mark.parametrize("simulator", SIMULATORS, ids=lambda s: s.name)
@@ -86,10 +89,10 @@ def test_simulators_show_what_the_report_says(made: synth.Design, simulator: Sim
     chosen, bare = told_by_the_tool(made)
     ideal = simulated_gain(with_grounded_reference(made.chain), simulator)
     with_divider = simulated_gain(with_bare_divider(made.chain), simulator)
-    assert abs(with_divider / ideal - 1) == pytest.approx(bare, rel=0.05)  # two digits are printed
-    assert bare > 0.5, "ninety decibels on a bare divider lose more than half"
+    assert with_divider / ideal == pytest.approx(bare, rel=0.02)  # three digits are printed
+    assert not 0.5 < bare < 2, "a bare divider changes ninety decibels beyond recognition"
     as_built = simulated_gain(made.chain, simulator)
-    assert abs(as_built / ideal - 1) == pytest.approx(chosen, rel=0.1)
+    assert as_built / ideal == pytest.approx(chosen, abs=2e-4)
     assert abs(as_built / ideal - 1) <= SHARE * ACCURACY * 1.01
 
 
