@@ -22,6 +22,7 @@ from synth.parts.op_amps import load_op_amps, select
 from synth.parts.passives import capacitor_stock, coupling_stock, resistor_stock
 from synth.planning import plan
 from synth.spec import Spec, load_spec, parse_spec, spec_to_dict, starter_spec
+from synth.spec.files import read_text
 from synth.topology.place import Stocks
 from synth.verification import verify
 
@@ -163,8 +164,14 @@ def stocks_for(spec: Spec) -> Stocks:
 
 def _digests(spec: Spec) -> dict[str, str]:
     """sha256 of the files that went in, by name; nothing for a spec that came from text."""
-    files = [Path(spec.source), *spec.catalog_files]
-    return {f.name: hashlib.sha256(f.read_bytes()).hexdigest() for f in files if f.is_file()}
+    files = [_spec_file(spec), *spec.catalog_files]
+    return {f.name: hashlib.sha256(f.read_bytes()).hexdigest() for f in files if f is not None and f.is_file()}
+
+
+def _spec_file(spec: Spec) -> Path | None:
+    """The file that a spec was loaded from; None for one from text, whose source is but a name."""
+    source = Path(spec.source)
+    return source if spec.folder == source.parent and source.is_file() else None
 
 
 def check(given: Design | Path | str) -> Design:
@@ -265,9 +272,9 @@ def spec_text(spec: Spec) -> str:
     Raises:
         SpecError: the file has changed since it was read.
     """
-    source = Path(spec.source)
-    if source.is_file():
-        text = source.read_text(encoding="utf-8")
+    source = _spec_file(spec)
+    if source is not None:
+        text = read_text(source, "a spec")
         if parse_spec(text, spec.source, spec.folder) != spec:
             raise SpecError(f"{source}: has changed since it was read; load it again")
         return text

@@ -32,7 +32,7 @@ resistance = "200 ohm"
 [supply]
 positive = "12 V"
 [filter]
-sections = 2
+sections = 1
 """
 pytestmark = pytest.mark.spice
 

@@ -408,7 +408,7 @@ def section_chain(
     loss_tangent: float = 0.0,
 ) -> Chain:
     """One multiple-feedback section of unit gain: equal capacitors, R1A = Q/(w C), R1 = 1/(2 Q w C), R2 = 2 Q/(w C)."""
-    model = model or op_amp(gain_bandwidth=1e12, dc_gain=1e12, output_resistance=1e-3)
+    model = model or op_amp(gain_bandwidth=1e14, dc_gain=1e12, output_resistance=1e-3)
     omega = 2 * np.pi * center
     r1a = q / (omega * c)
     parts = (
