@@ -10,9 +10,9 @@ from synth.circuit.sensor import sensor_network
 from synth.model.part import OpAmp
 from synth.spec import Rolloff, Sensor
 from tests.support.networks import (
-    K,
     KELVIN,
     Board,
+    K,
     check_delay_is_phase_slope,
     check_delay_is_sum_over_poles_and_zeros,
     check_noise_is_real_part_of_impedance,
@@ -117,7 +117,9 @@ def test_passive_networks_are_reciprocal(seed: int) -> None:
         {"resistance": 50.0, "inductance": 10e-3, "capacitance": 200e-12},
     ],
 )
-@pytest.mark.parametrize("rolloff", [(), (Rolloff("high-pass", corner=48e3),), (Rolloff("resonant", frequency=1e5, q=5.0),)])
+@pytest.mark.parametrize(
+    "rolloff", [(), (Rolloff("high-pass", corner=48e3),), (Rolloff("resonant", frequency=1e5, q=5.0),)]
+)
 def test_sensor_noise_is_that_of_its_source_impedance(source: dict[str, float], rolloff: tuple[Rolloff, ...]) -> None:
     """4kT Re Z(f) at the terminals, the rolloff noiseless; Z = R + jwL, with C across."""
     sensor = Sensor(scale=1.0, input_unit="A", rolloff=rolloff, **source)  # type: ignore[arg-type]
