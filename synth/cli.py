@@ -89,7 +89,7 @@ def new(
 
 @app.command()
 def design(
-    spec: Annotated[Path, typer.Argument(help="Spec file, TOML.", show_default=False)],
+    spec: Annotated[Path, typer.Argument(help="Spec file, TOML.", show_default=False, readable=False)],
     out: Annotated[Path | None, typer.Option(help="Folder to write the design into.", show_default=False)] = None,
     seed: Annotated[int, typer.Option(help="Seed of every random draw.", min=0)] = 0,
     force: Force = False,
@@ -109,7 +109,7 @@ def design(
 
 @app.command()
 def check(
-    folder: Annotated[Path, typer.Argument(help="Design folder.", show_default=False)],
+    folder: Annotated[Path, typer.Argument(help="Design folder.", show_default=False, readable=False)],
     as_json: AsJson = False,
 ) -> None:
     """Rebuild the circuit from a folder's design.json alone and judge it anew."""
