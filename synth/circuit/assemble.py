@@ -61,8 +61,8 @@ def build_values(chain: Chain, drawn: Drawn) -> FloatArray:
     """Element values of many builds, shape (elements, builds), in the order of `build_network(chain).elements`.
 
     Args:
-        drawn: arrays of shape (builds,) by key: a part reference ("R3", in ohm or farad), or an amplifier's
-            reference and figure ("U1.gain_bandwidth"); what is not drawn keeps its nominal value.
+        drawn: arrays of shape (builds,) by key: a part reference ("R3", in ohm or farad), or a reference and a
+            figure of it ("U1.gain_bandwidth", "R3.stray", "C1.loss_tangent"); what is not drawn is nominal.
     """
     values = [np.asarray(p.value, dtype=float) for p in _walk(chain, drawn)]
     count = max((v.size for v in values), default=1)
@@ -97,7 +97,8 @@ def _resistor(part: Part, drawn: Drawn) -> Iterator[Placed]:
     value = drawn.get(part.ref, part.number)
     yield Placed(part.ref, "conductance", part.nodes, 1 / value, True, part.ref)
     if part.stray > 0:
-        yield Placed(f"C_{part.ref}_stray", "capacitance", part.nodes, part.stray, False, part.ref)
+        stray = drawn.get(f"{part.ref}.stray", part.stray)
+        yield Placed(f"C_{part.ref}_stray", "capacitance", part.nodes, stray, False, part.ref)
 
 
 def _capacitor(part: Part, drawn: Drawn, omega: float) -> Iterator[Placed]:
@@ -108,7 +109,7 @@ def _capacitor(part: Part, drawn: Drawn, omega: float) -> Iterator[Placed]:
         return
     inner = f"{part.ref}_x"
     yield Placed(part.ref, "capacitance", (part.nodes[0], inner), value, False, part.ref)
-    series = omega * value / part.loss_tangent
+    series = omega * value / drawn.get(f"{part.ref}.loss_tangent", part.loss_tangent)
     yield Placed(f"R_{part.ref}_loss", "conductance", (inner, part.nodes[1]), series, True, part.ref)
 
 
@@ -118,37 +119,36 @@ def _op_amp(part: Part, model: OpAmp, drawn: Drawn) -> Iterator[Placed]:
     The loop gain at low frequency is the DC gain A0, not GBW/f: A(s) = A0 / (1 + s A0/(2 pi GBW)) / (1 + s/w2).
     """
     plus, minus, out = part.nodes
-    gain_bandwidth = drawn.get(f"{part.ref}.gain_bandwidth", model.gain_bandwidth)
-    dc_gain = drawn.get(f"{part.ref}.dc_gain", model.dc_gain)
     ref, gm, inner = part.ref, INPUT_TRANSCONDUCTANCE, f"{part.ref}_p"
+
+    def figure(name: str) -> float | FloatArray:
+        nominal: float = getattr(model, name)
+        return drawn.get(f"{ref}.{name}", nominal)
 
     def placed(suffix: str, kind: ElementKind, nodes: tuple[str, ...], value: float | FloatArray) -> Placed:
         return Placed(f"{ref}_{suffix}", kind, nodes, value, False, ref)
 
     yield placed("gm", "transconductance", (GROUND, inner, plus, minus), gm)
-    yield placed("g0", "conductance", (inner, GROUND), gm / dc_gain)
-    yield placed("c0", "capacitance", (inner, GROUND), gm / (2 * np.pi * gain_bandwidth))
+    yield placed("g0", "conductance", (inner, GROUND), gm / figure("dc_gain"))
+    yield placed("c0", "capacitance", (inner, GROUND), gm / (2 * np.pi * figure("gain_bandwidth")))
     if model.second_pole is not None:
         second = f"{ref}_q"
         yield placed("gm2", "transconductance", (GROUND, second, inner, GROUND), gm)
         yield placed("g2", "conductance", (second, GROUND), gm)
-        yield placed("c2", "capacitance", (second, GROUND), gm / (2 * np.pi * model.second_pole))
+        yield placed("c2", "capacitance", (second, GROUND), gm / (2 * np.pi * figure("second_pole")))
         inner = second
-    yield placed("gmo", "transconductance", (GROUND, out, inner, GROUND), 1 / model.output_resistance)
-    yield placed("go", "conductance", (out, GROUND), 1 / model.output_resistance)
+    yield placed("gmo", "transconductance", (GROUND, out, inner, GROUND), 1 / figure("output_resistance"))
+    yield placed("go", "conductance", (out, GROUND), 1 / figure("output_resistance"))
+    differential, common = figure("input_capacitance_differential"), figure("input_capacitance_common")
+    to_ground = common + figure("stray_inverting_to_ground")
     if plus != GROUND:
-        yield placed("cdiff", "capacitance", (plus, minus), model.input_capacitance_differential)
-        yield placed("cplus", "capacitance", (plus, GROUND), model.input_capacitance_common)
-        to_ground = model.input_capacitance_common + model.stray_inverting_to_ground
+        yield placed("cdiff", "capacitance", (plus, minus), differential)
+        yield placed("cplus", "capacitance", (plus, GROUND), common)
     else:
-        to_ground = (
-            model.input_capacitance_differential
-            + model.input_capacitance_common
-            + model.stray_inverting_to_ground
-        )
+        to_ground = to_ground + differential
     if minus != out:
         yield placed("cminus", "capacitance", (minus, GROUND), to_ground)
-        yield placed("cstray", "capacitance", (out, minus), model.stray_output_to_inverting)
+        yield placed("cstray", "capacitance", (out, minus), figure("stray_output_to_inverting"))
 
 
 def _op_amp_noise(part: Part, model: OpAmp) -> tuple[NoiseSource, ...]:

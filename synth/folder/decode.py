@@ -47,7 +47,7 @@ MODEL_ABOVE_ZERO = ("gain_bandwidth", "dc_gain", "output_resistance")
 MODEL_NOT_BELOW_ZERO = (
     "input_capacitance_differential", "input_capacitance_common", "voltage_noise", "voltage_noise_corner",
     "current_noise", "current_noise_corner", "current_noise_slope", "minimum_noise_gain", "slew_rate",
-    "gain_bandwidth_spread", "stray_output_to_inverting", "stray_inverting_to_ground",
+    "gain_bandwidth_spread", "dc_gain_spread", "stray_output_to_inverting", "stray_inverting_to_ground",
 )  # fmt: skip
 MODEL_ANY = (
     "swing_headroom_high", "swing_headroom_low", "common_mode_headroom_high", "common_mode_headroom_low",
@@ -62,7 +62,8 @@ STAGE = (
 )  # fmt: skip
 TARGET = ("gain", "pre_emphasis", "center_frequency", "q")
 PART = (
-    "ref", "kind", "role", "nodes", "value", "unit", "code", "tolerance", "temperature_coefficient", "stage",
+    "ref", "kind", "role", "nodes", "value", "unit", "code", "tolerance", "temperature_coefficient",
+    "common_share", "stage",
     "technology", "stray", "loss_tangent", "size", "rating", "note",
 )  # fmt: skip
 RESPONSE = ("frequency", "gain_db", "phase_deg", "group_delay", "close")
@@ -208,6 +209,7 @@ def _part(node: Node) -> Part:
         value=node.text("value") if kind == "op-amp" else node.number("value", above=0),
         tolerance=node.number("tolerance", least=0, below=1),
         temperature_coefficient=node.number("temperature_coefficient"),
+        common_share=node.number("common_share", least=0),
         technology=node.text("technology"),
         stray=node.number("stray", least=0),
         loss_tangent=node.number("loss_tangent", least=0),

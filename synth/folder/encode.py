@@ -170,6 +170,7 @@ def _part(part: Part) -> Table:
         "code": _code(part),
         "tolerance": float(part.tolerance),
         "temperature_coefficient": float(part.temperature_coefficient),
+        "common_share": float(part.common_share),
         "stage": part.stage,
         "technology": part.technology,
         "stray": float(part.stray),

@@ -21,13 +21,14 @@ class Part:
         nodes: two nodes; for an op amp (non-inverting input, inverting input, output).
         value: [ohm] or [F]; for an op amp the type number.
         tolerance: relative, 0.01 for 1 %; 0 for an op amp.
-        temperature_coefficient: [1/K]; 0 for an op amp.
+        temperature_coefficient: [1/K] half-width; 0 for an op amp.
         technology: "thick film", "C0G", ...; the amplifier class for an op amp.
         stray: [F] capacitance across a resistor's body; 0 otherwise.
         loss_tangent: tan d of a capacitor, at the chain's centre; 0 otherwise.
         size: case size, "" when it does not matter.
         rating: power or voltage rating as text for the bill.
         note: anything the bill should say.
+        common_share: share of the temperature coefficient that all parts of the technology have in common.
     """
 
     ref: str
@@ -44,6 +45,7 @@ class Part:
     size: str = ""
     rating: str = ""
     note: str = ""
+    common_share: float = 0.0
 
     @property
     def number(self) -> float:
@@ -77,7 +79,7 @@ class OpAmp:
         bias_current: [A].
         supply_minimum, supply_maximum: [V] total supply.
         supply_current: [A] each amplifier.
-        gain_bandwidth_spread: relative spread of the gain-bandwidth product between builds (0.3 for 30 %).
+        gain_bandwidth_spread, dc_gain_spread: relative half-width between builds (0.3 for 30 %).
         stray_output_to_inverting, stray_inverting_to_ground: [F] of the layout around it.
         packages: (amplifiers in the package, type number to order), smallest first.
     """
@@ -109,6 +111,7 @@ class OpAmp:
     supply_maximum: float
     supply_current: float
     gain_bandwidth_spread: float
+    dc_gain_spread: float
     stray_output_to_inverting: float
     stray_inverting_to_ground: float
     packages: tuple[tuple[int, str], ...]

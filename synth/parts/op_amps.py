@@ -73,6 +73,7 @@ _FIGURES = _REQUIRED | _OPTIONAL | _DEFAULTED
 _OP_AMP_FIGURES = (
     *(key for key in _REQUIRED),
     "gain_bandwidth_spread",
+    "dc_gain_spread",
     "stray_output_to_inverting",
     "stray_inverting_to_ground",
 )
@@ -86,7 +87,7 @@ class OpAmpEntry:
         op_amp: the figures of the circuit.
         supply_rejection_positive, supply_rejection_negative: [dB] at DC, referred to the input; None: not known.
         supply_rejection_corner_positive, supply_rejection_corner_negative: [Hz] from where it falls 20 dB a decade.
-        dc_gain_spread, voltage_noise_spread, current_noise_spread: relative spread between builds.
+        voltage_noise_spread, current_noise_spread: relative spread between builds.
         provenance: figure -> "found", "macromodel", "derived", "memory" or "uncertain".
         source: where the figures come from.
         note: what a user of the type should know.
@@ -97,7 +98,6 @@ class OpAmpEntry:
     supply_rejection_negative: float | None
     supply_rejection_corner_positive: float | None
     supply_rejection_corner_negative: float | None
-    dc_gain_spread: float
     voltage_noise_spread: float
     current_noise_spread: float
     provenance: Mapping[str, str]
@@ -205,7 +205,6 @@ def _op_amp_entry(entry: Entry, name: str, defaults: _Defaults, complete: bool) 
         supply_rejection_negative=figures.get("supply_rejection_negative"),
         supply_rejection_corner_positive=figures.get("supply_rejection_corner_positive"),
         supply_rejection_corner_negative=figures.get("supply_rejection_corner_negative"),
-        dc_gain_spread=figures["dc_gain_spread"],
         voltage_noise_spread=figures["voltage_noise_spread"],
         current_noise_spread=figures["current_noise_spread"],
         provenance=MappingProxyType(tags),

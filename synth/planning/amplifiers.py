@@ -22,7 +22,6 @@ NOISE_SLACK = 1.15  # a noise within this ratio of the best is as good
 GAIN_CEILING = 300.0  # of one stage: beyond it layout decides
 SLEW_RESERVE = 0.5  # of the slew rate, for the signal
 SMALLEST_STAGE_GAIN = 1.5
-OPEN_LOOP_SPREAD = 0.5  # assumed relative spread of the DC gain; uncertain, from memory
 USUAL_CAPACITANCE = 4.7e-10  # [F] the impedance level that a section's noise is guessed at
 UNITY_MARGIN = 50.0  # [degree] of phase at unity gain, that a section's amplifier should have
 LARGEST_SHIFT, LARGEST_LOSS = 0.12, 0.3  # of a section's frequency and Q by its amplifier: beyond it, no design
@@ -114,7 +113,7 @@ def _spread_score(spec: Spec, op_amp: OpAmp, q: float, topology: SectionTopology
     if max(shift, stretch) > LARGEST_SHIFT or loss > LARGEST_LOSS:
         return None
     moved = shift * op_amp.gain_bandwidth_spread * center / (spec.target.center_tolerance * spec.target.bandwidth)
-    widened = loss * OPEN_LOOP_SPREAD + stretch * op_amp.gain_bandwidth_spread
+    widened = loss * op_amp.dc_gain_spread + stretch * op_amp.gain_bandwidth_spread
     return max(moved, widened / spec.target.bandwidth_tolerance)
 
 

@@ -44,7 +44,8 @@ def envelope_step(
     pulse = np.zeros(points)
     pulse[: points // 2] = 1.0
     output = np.fft.ifft(np.fft.ifftshift(h) * np.fft.fft(pulse))
-    time = np.asarray((np.arange(points // 2) + 0.5) / (2 * span), dtype=float)  # the pulse rises half a sample before its first
+    middle = 0.5  # the pulse rises half a sample before its first
+    time = np.asarray((np.arange(points // 2) + middle) / (2 * span), dtype=float)
     final = abs(circuit.response(network, [center])[0])
     return time, np.abs(output[: points // 2]) / final
 

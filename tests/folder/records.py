@@ -90,6 +90,7 @@ def make_model(name: str = "AMP1") -> OpAmp:
         supply_maximum=36.0,
         supply_current=3.6e-3,
         gain_bandwidth_spread=0.3,
+        dc_gain_spread=0.5,
         stray_output_to_inverting=0.1e-12,
         stray_inverting_to_ground=2e-12,
         packages=((1, f"{name}S"), (2, f"{name}D")),

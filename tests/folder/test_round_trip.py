@@ -109,6 +109,7 @@ def test_what_the_contract_lists_is_there() -> None:
         "code": "49R9",
         "tolerance": 0.01,
         "temperature_coefficient": 5e-05,
+        "common_share": 0.0,
         "stage": "gain 1",
         "technology": "thick film",
         "stray": 4e-14,

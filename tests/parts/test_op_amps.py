@@ -30,7 +30,6 @@ EXTRAS = (
     "supply_rejection_negative",
     "supply_rejection_corner_positive",
     "supply_rejection_corner_negative",
-    "dc_gain_spread",
     "voltage_noise_spread",
     "current_noise_spread",
 )

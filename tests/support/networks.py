@@ -348,6 +348,7 @@ def op_amp(**figures: object) -> OpAmp:
         supply_maximum=36.0,
         supply_current=4e-3,
         gain_bandwidth_spread=0.3,
+        dc_gain_spread=0.5,
         stray_output_to_inverting=0.0,
         stray_inverting_to_ground=0.0,
         packages=((1, "TEST"),),

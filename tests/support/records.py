@@ -84,6 +84,7 @@ def op_amp(type_: str, packages: tuple[tuple[int, str], ...]) -> OpAmp:
         supply_maximum=33.0,
         supply_current=8e-3,
         gain_bandwidth_spread=0.3,
+        dc_gain_spread=0.5,
         stray_output_to_inverting=0.1e-12,
         stray_inverting_to_ground=2e-12,
         packages=packages,

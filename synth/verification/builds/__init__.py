@@ -1,0 +1,1 @@
+"""Every build, not the nominal one: draws, statistics, ranges and yields."""
