@@ -1,4 +1,17 @@
-"""The sensor as circuit: scale, rolloff and source impedance between the input node and the terminals.
+"""The sensor as circuit: scale, rolloff and source between the input node and the terminals.
+
+What `scale` means, per input unit and before the rolloff:
+
+    voltage             open-circuit voltage [V]; behind a series inductance with a capacitance across the terminals,
+                        well below their resonance
+    transformer         voltage across the burden [V] well above the corner R/(2 pi L) of burden and magnetizing
+                        inductance, whose high-pass follows from the circuit and must not be given again as a rolloff
+    motional branch     voltage of the source inside the branch [V]: what drives the element mechanically.  The
+                        terminals, open, show it divided by the branch's impedance and the shunt capacitance: nearly
+                        all of it at series resonance, the share Cm/(Cm + C) well below, more near the parallel
+                        resonance
+    current             short-circuit current [A]
+    charge              short-circuit charge [C]; the current into the terminals is its derivative
 
 Every rolloff is built from noiseless controlled sources, so that the only noise is that of the source impedance,
 4 k T Re Z(f) at the terminals, or the density that the spec gives.
@@ -9,30 +22,16 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 
-from synth.circuit.network import GROUND, ZERO_CELSIUS, Element, ElementKind, Network, NoiseSource
-from synth.errors import CircuitError
-from synth.spec import Rolloff, Sensor
-
-TERMINAL = "sig"
-UNIT = 1e-3  # [S] scale of the noiseless inside; no effect at the terminals
-TINY_RESISTANCE = 1e-3  # [ohm] stands for a source with no impedance, and for the seat of a given noise
-
-Row = tuple[str, ElementKind, tuple[str, ...], float, bool]
-
-
-def first_order_corner(rolloff: Rolloff) -> float:
-    """Corner [Hz] of the first-order response that loses `loss` at the frequency `at`.
-
-    |H| = 1/sqrt(1 + (fc/f)^2) for a high-pass; the reciprocal ratio for a low-pass.
-    """
-    if rolloff.kind != "loss":
-        if rolloff.corner is None:
-            raise CircuitError(f"a rolloff of kind {rolloff.kind} has no corner")
-        return rolloff.corner
-    if rolloff.at is None or rolloff.loss is None:
-        raise CircuitError("a rolloff of kind loss needs both `at` and `loss`")
-    ratio = math.sqrt(1 / (1 - rolloff.loss) ** 2 - 1)
-    return rolloff.at * ratio if rolloff.shape == "high-pass" else rolloff.at / ratio
+from synth.circuit.network import BOLTZMANN, GROUND, ZERO_CELSIUS, Element, Network, NoiseSource
+from synth.circuit.sensor_rolloff import UNIT, Row, first_order_corner, rolloff_elements
+from synth.circuit.sensor_source import (
+    TERMINAL,
+    TINY_RESISTANCE,
+    check_source,
+    source_elements,
+    source_noise_sources,
+)
+from synth.spec import Sensor
 
 
 def sensor_elements(sensor: Sensor, source: str) -> Iterator[Row]:
@@ -41,89 +40,79 @@ def sensor_elements(sensor: Sensor, source: str) -> Iterator[Row]:
     Raises:
         CircuitError: a kind of sensor or rolloff that the circuit cannot hold.
     """
+    rows, node = _scaled_rolloff(sensor, source)
+    yield from rows
+    yield from source_elements(sensor, node)
+
+
+def _scaled_rolloff(sensor: Sensor, source: str) -> tuple[tuple[Row, ...], str]:
+    """Scale times rolloff [V, A or C per input unit], and the node where it stands."""
     node = "sen0"
-    yield "sen0_gm", "transconductance", (GROUND, node, source, GROUND), sensor.scale * UNIT, False
-    yield "sen0_g", "conductance", (node, GROUND), UNIT, False
-    count = 0
-    for rolloff in sensor.rolloff:
-        order = rolloff.order if rolloff.kind in ("high-pass", "low-pass") else 1
-        for _ in range(order):
-            count += 1
-            previous, node = node, f"sen{count}"
-            yield from _rolloff(rolloff, f"sen{count}", previous, node)
-    yield from _source_impedance(sensor, node)
-
-
-def _rolloff(rolloff: Rolloff, name: str, before: str, node: str) -> Iterator[Row]:
-    shape = rolloff.shape if rolloff.kind == "loss" else rolloff.kind
-    if shape == "resonant":
-        yield from _resonance(rolloff, name, before, node)
-        return
-    if shape not in ("low-pass", "high-pass"):
-        raise CircuitError(f"a rolloff of kind {rolloff.kind} has no circuit")
-    low = node if shape == "low-pass" else f"{node}_lp"
-    capacitance = UNIT / (2 * math.pi * first_order_corner(rolloff))
-    yield f"{name}_gm", "transconductance", (GROUND, low, before, GROUND), UNIT, False
-    yield f"{name}_g", "conductance", (low, GROUND), UNIT, False
-    yield f"{name}_c", "capacitance", (low, GROUND), capacitance, False
-    if shape == "high-pass":  # what the low-pass leaves
-        yield f"{name}_gd", "transconductance", (GROUND, node, before, low), UNIT, False
-        yield f"{name}_gh", "conductance", (node, GROUND), UNIT, False
-
-
-def _resonance(rolloff: Rolloff, name: str, before: str, node: str) -> Iterator[Row]:
-    """(w0/Q) s / (s^2 + (w0/Q) s + w0^2): one at the resonance."""
-    if rolloff.frequency is None or rolloff.q is None:
-        raise CircuitError("a rolloff of kind resonant needs both `frequency` and `q`")
-    capacitance = UNIT / (2 * math.pi * rolloff.frequency)
-    inner = f"{node}_i"
-    yield f"{name}_gm", "transconductance", (GROUND, node, before, GROUND), UNIT / rolloff.q, False
-    yield f"{name}_g", "conductance", (node, GROUND), UNIT / rolloff.q, False
-    yield f"{name}_c", "capacitance", (node, GROUND), capacitance, False
-    yield f"{name}_gb", "transconductance", (node, GROUND, inner, GROUND), UNIT, False
-    yield f"{name}_gf", "transconductance", (GROUND, inner, node, GROUND), UNIT, False
-    yield f"{name}_ci", "capacitance", (inner, GROUND), capacitance, False
-
-
-def _source_impedance(sensor: Sensor, node: str) -> Iterator[Row]:
-    """Norton source with the resistance; series inductance as a gyrated capacitance; parallel capacitance."""
-    resistance = sensor.resistance or TINY_RESISTANCE
-    own_noise = sensor.noise is None and sensor.resistance is not None
-    inductive = sensor.inductance is not None
-    last = "sig0" if _noise_seat(sensor) else TERMINAL
-    first = "senz" if inductive else last
-    yield "sen_gs", "transconductance", (GROUND, first, node, GROUND), 1 / resistance, False
-    yield "R_sensor", "conductance", (first, GROUND), 1 / resistance, own_noise
-    if sensor.inductance is not None:
-        yield "sen_gl", "transconductance", (first, last, "senl", GROUND), UNIT, False
-        yield "sen_gv", "transconductance", (GROUND, "senl", first, last), UNIT, False
-        yield "sen_cl", "capacitance", ("senl", GROUND), sensor.inductance * UNIT**2, False
-    if sensor.capacitance is not None:
-        yield "C_sensor", "capacitance", (last, GROUND), sensor.capacitance, False
-    if _noise_seat(sensor):
-        yield "sen_gn", "conductance", (last, TERMINAL), 1 / TINY_RESISTANCE, False
-
-
-def _noise_seat(sensor: Sensor) -> bool:
-    """A given density stands at the terminals: behind a reactance it needs a seat of its own."""
-    return sensor.noise is not None and (sensor.inductance is not None or sensor.capacitance is not None)
+    scale: tuple[Row, ...] = (
+        ("sen0_gm", "transconductance", (GROUND, node, source, GROUND), sensor.scale * UNIT, False),
+        ("sen0_g", "conductance", (node, GROUND), UNIT, False),
+    )
+    rows, last = rolloff_elements(sensor.rolloff, node)
+    return (*scale, *rows), last
 
 
 def sensor_noise(sensor: Sensor) -> tuple[NoiseSource, ...]:
     """The density that the spec gives for the terminals, as a current; nothing where it gives none."""
-    if sensor.noise is None:
-        return ()
-    if _noise_seat(sensor):
-        nodes, resistance = ("sig0", TERMINAL), TINY_RESISTANCE
-    else:
-        nodes, resistance = (GROUND, TERMINAL), sensor.resistance or TINY_RESISTANCE
-    return (NoiseSource("sen_noise", nodes, sensor.noise / resistance, owner="sensor", label="sensor"),)
+    return source_noise_sources(sensor)
 
 
 def sensor_network(sensor: Sensor, ambient: float) -> Network:
-    """The sensor alone, its terminals open, at an ambient temperature [degC]."""
-    elements = tuple(
-        Element(name, kind, nodes, value, noisy, "sensor")
-        for name, kind, nodes, value, noisy in sensor_elements(sensor, "in")
-    )
-    return Network("in", TERMINAL, elements, sensor_noise(sensor), (), ambient + ZERO_CELSIUS)
+    """The sensor alone at an ambient temperature [degC]: its output and the noise of it.
+
+    The output node carries the open-circuit voltage [V], or a voltage that is the short-circuit current [A] or the
+    short-circuit charge [C] in number.
+    """
+    if sensor.output == "voltage":
+        return terminal_network(sensor, ambient)
+    check_source(sensor)
+    rows, node = _scaled_rolloff(sensor, "in")
+    out = "sen_out"
+    readout: list[Row] = [
+        ("sen_go", "transconductance", (GROUND, out, node, GROUND), UNIT, False),
+        ("sen_gr", "conductance", (out, GROUND), UNIT, False),
+    ]
+    noise: tuple[NoiseSource, ...] = ()
+    if sensor.noise is not None:
+        noise = (NoiseSource("sen_noise", (GROUND, out), sensor.noise * UNIT, owner="sensor", label="sensor"),)
+    elif sensor.resistance is not None:
+        density = math.sqrt(4 * BOLTZMANN * _kelvin(ambient) / sensor.resistance)
+        into = out
+        if sensor.output == "charge":  # a charge is the integral of the current
+            into = "sen_n"
+            readout += [
+                ("sen_cn", "capacitance", (into, GROUND), UNIT, False),
+                ("sen_gn", "transconductance", (GROUND, out, into, GROUND), UNIT, False),
+            ]
+        noise = (NoiseSource("sen_noise", (GROUND, into), density * UNIT, owner="sensor", label="sensor"),)
+    return Network("in", out, _elements((*rows, *readout)), noise, (), _kelvin(ambient))
+
+
+def terminal_network(sensor: Sensor, ambient: float) -> Network:
+    """The sensor alone, its terminals open, at an ambient temperature [degC]; the output is their voltage."""
+    elements = _elements(sensor_elements(sensor, "in"))
+    return Network("in", TERMINAL, elements, sensor_noise(sensor), (), _kelvin(ambient))
+
+
+def _elements(rows: Iterator[Row] | tuple[Row, ...]) -> tuple[Element, ...]:
+    return tuple(Element(name, kind, nodes, value, noisy, "sensor") for name, kind, nodes, value, noisy in rows)
+
+
+def _kelvin(celsius: float) -> float:
+    return celsius + ZERO_CELSIUS
+
+
+__all__ = [
+    "TERMINAL",
+    "TINY_RESISTANCE",
+    "UNIT",
+    "first_order_corner",
+    "sensor_elements",
+    "sensor_network",
+    "sensor_noise",
+    "terminal_network",
+]
