@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import logging
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -18,6 +18,8 @@ from synth.errors import CatalogError, CircuitError, InfeasibleError, SpecError
 from synth.model.chain import Chain
 from synth.model.judgement import Requirement, Verification
 from synth.model.record import DesignRecord
+from synth.parts import listing
+from synth.parts.check import check_catalog
 from synth.parts.op_amps import load_op_amps, select
 from synth.parts.passives import capacitor_stock, coupling_stock, resistor_stock
 from synth.planning import plan
@@ -251,6 +253,66 @@ def json_text(chain: Design) -> str:
     return folder.to_json(chain.record)
 
 
+def parts_text(
+    kind: str = "op-amps",
+    catalogs: Sequence[Path] = (),
+    as_json: bool = False,
+    *,
+    min_gbw: str | None = None,
+    noise_at: str | None = None,
+    max_noise: str | None = None,
+    supply: str | None = None,
+    technology: str | None = None,
+) -> str:
+    """Parts of the catalogs as a table or JSON; op amps by what is asked of them, as texts with units.
+
+    Raises:
+        CatalogError: unknown kind, a catalog or a quantity that cannot be used, or op amps' figures asked of others.
+    """
+    from synth.output import parts_table
+
+    query = listing.op_amp_query(min_gbw, noise_at, max_noise, supply, technology)
+    if kind == "op-amps":
+        lines = listing.list_op_amps(query, load_op_amps(catalogs))
+        return parts_table.op_amp_json(lines, query) if as_json else parts_table.op_amp_table(lines, query)
+    sheets = listing.sheets(kind, catalogs)
+    if query != listing.OpAmpQuery():
+        raise CatalogError(f"kind {kind}: only op amps are chosen by their figures; leave the kind or the figures out")
+    return parts_table.sheet_json(sheets) if as_json else parts_table.kind_table(kind, sheets)
+
+
+def part_text(name: str, kind: str | None = None, catalogs: Sequence[Path] = (), as_json: bool = False) -> str:
+    """One part of the catalogs whole, with the provenance of each figure, as text or JSON.
+
+    Raises:
+        CatalogError: no catalog has it, or one cannot be used.
+    """
+    from synth.output import parts_table
+
+    sheet = listing.find_sheet(name, kind, catalogs)
+    return parts_table.sheet_json(sheet) if as_json else parts_table.sheet_text(sheet)
+
+
+def catalog_text(path: Path, as_json: bool = False) -> tuple[bool, str]:
+    """Whether a catalog can be used, and all that is wrong in it or what it holds, as text or JSON."""
+    from synth.output import parts_table
+
+    found = check_catalog(path)
+    return not found.problems, parts_table.report_json(found) if as_json else parts_table.report_text(found)
+
+
+def merged_bill(folders: Sequence[Path], boards: int = 1, as_json: bool = False) -> str:
+    """One bill of materials for several design folders and several boards of each, as CSV or JSON.
+
+    Raises:
+        FolderError: a folder cannot be read or is named twice.
+    """
+    from synth.output import merged_bill as merging
+
+    bill = merging.merged_bill([(path, load_design(path).record) for path in folders], boards)
+    return merging.merged_json(bill) if as_json else merging.merged_csv(bill)
+
+
 def write_text(path: Path, text: str) -> None:
     """Write a new text file.
 
@@ -285,6 +347,7 @@ def spec_text(spec: Spec) -> str:
 
 __all__ = [
     "Design",
+    "catalog_text",
     "check",
     "check_folder",
     "design",
@@ -292,8 +355,11 @@ __all__ = [
     "json_text",
     "load_design",
     "load_spec",
+    "merged_bill",
     "netlist",
     "parse_spec",
+    "part_text",
+    "parts_text",
     "report",
     "save_design",
     "spec_text",

@@ -121,6 +121,62 @@ def check(
     _show(checked, as_json)
 
 
+@app.command()
+def parts(
+    name: Annotated[
+        str | None, typer.Argument(metavar="TYPE", help="Show this part whole.", show_default=False)
+    ] = None,
+    kind: Annotated[
+        str | None, typer.Option(help="op-amps (default), resistors, capacitors or crystals.", show_default=False)
+    ] = None,
+    min_gbw: Annotated[str | None, typer.Option(help='Least gain-bandwidth product, "10 MHz".')] = None,
+    noise_at: Annotated[
+        str | None,
+        typer.Option("--noise-at", "--max-noise-at", help="Show noise at this frequency, the quietest first."),
+    ] = None,
+    max_noise: Annotated[
+        str | None, typer.Option(help='Largest voltage noise there, "5 nV" (white if no frequency is given).')
+    ] = None,
+    supply: Annotated[str | None, typer.Option(help='Total supply it must work on, "5 V".')] = None,
+    technology: Annotated[str | None, typer.Option(help="bipolar, JFET or CMOS.")] = None,
+    catalog: Annotated[list[Path] | None, typer.Option(help="A catalog of your own; repeatable.")] = None,
+    check_file: Annotated[
+        Path | None, typer.Option("--check", help="Tell all that is wrong in this catalog.", show_default=False)
+    ] = None,
+    as_json: Annotated[bool, typer.Option("--json", help="Print JSON instead of a table.")] = False,
+) -> None:
+    """List parts of the catalogs, show one whole, or check a catalog of your own."""
+    from synth import api
+
+    asked = {
+        "min_gbw": min_gbw,
+        "noise_at": noise_at,
+        "max_noise": max_noise,
+        "supply": supply,
+        "technology": technology,
+    }
+    if check_file is not None:
+        usable, text = api.catalog_text(check_file, as_json)
+        typer.echo(text, nl=False, err=not (usable or as_json))
+        raise typer.Exit(MET if usable else UNUSABLE)
+    if name is not None:
+        typer.echo(api.part_text(name, kind, catalog or (), as_json), nl=False)
+    else:
+        typer.echo(api.parts_text(kind or "op-amps", catalog or (), as_json, **asked), nl=False)
+
+
+@app.command()
+def bom(
+    folders: Annotated[list[Path], typer.Argument(help="Design folders.", show_default=False)],
+    boards: Annotated[int, typer.Option(help="How many of each are built.", min=1)] = 1,
+    as_json: Annotated[bool, typer.Option("--json", help="Print JSON instead of CSV.")] = False,
+) -> None:
+    """Merge the bills of design folders, as their design.json stands now, into one."""
+    from synth import api
+
+    typer.echo(api.merged_bill(folders, boards, as_json), nl=False)
+
+
 def _show(made: Design, as_json: bool) -> None:
     from synth import api
 
