@@ -15,6 +15,7 @@ from synth.model.record import Candidate
 from synth.planning.amplifiers import largest_q
 from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
 from synth.planning.partition import partitions
+from synth.planning.safe import at_least
 from synth.planning.workshop import Workshop, build_chain
 from synth.quantity import format_si
 from synth.spec import Spec
@@ -166,18 +167,32 @@ def ideal_rejection(pairs: tuple[PolePair, ...], center: float, frequency: float
     return gain_db(center) - gain_db(frequency)
 
 
+def _highest_q(proposal: _Proposal) -> float:
+    return max(pair.q for pair in proposal.pairs)
+
+
+def _narrowest(spec: Spec, proposal: _Proposal, limit: float) -> float:
+    """The bandwidth [Hz] at which a proposal's family and order need no more than a Q."""
+    insisted = replace(spec.filter, family=proposal.family, sections=len(proposal.pairs))
+    bandwidth, most = spec.target.bandwidth, 2 * spec.target.center_frequency
+    while _highest_q(proposal) > limit and bandwidth < most:
+        bandwidth = min(at_least(1.0002 * bandwidth * _highest_q(proposal) / limit), most)
+        wider = replace(spec, filter=insisted, target=replace(spec.target, bandwidth=bandwidth))
+        proposal = next(_proposals(wider))
+    return bandwidth
+
+
 def _no_proposal(spec: Spec, lost: list[Candidate]) -> InfeasibleError:
     """Nothing passed the screen: the Q or a reject binds, with the nearest value that would work."""
     steep = [c for c in lost if c.lost_on.startswith("reject")]
     limit = largest_q(spec)
     if not steep:
-        q = min(
-            max(p.q for p in proposal.pairs) for proposal in _proposals(spec)
-        )
-        wider = spec.target.bandwidth * q / limit
+        gentlest = min(_proposals(spec), key=_highest_q)
+        q = _highest_q(gentlest)
         return InfeasibleError(
             f"{spec.source}: target.bandwidth of {format_si(spec.target.bandwidth, 'Hz')} needs sections of Q {q:.3g}, "
-            f"beyond the {limit:g} that a section reaches; the narrowest that works is {format_si(wider * 1.001, 'Hz')}"
+            f"beyond the {limit:g} that a section reaches; the narrowest that works is "
+            f"{format_si(_narrowest(spec, gentlest, limit), 'Hz')}"
         )
     reject = next(r for r in spec.target.reject if f"reject {format_si(r.frequency, 'Hz')}" == steep[-1].lost_on)
     reachable = max(
@@ -190,5 +205,5 @@ def _no_proposal(spec: Spec, lost: list[Candidate]) -> InfeasibleError:
     )
     return InfeasibleError(
         f"{spec.source}: target.reject of {reject.by:.4g} dB at {format_si(reject.frequency, 'Hz')} is beyond "
-        f"{MOST_SECTIONS} sections of Q {limit:g}; the most that works is {reachable:.3g} dB, or narrow the bandwidth"
+        f"{spec.filter.sections or MOST_SECTIONS} sections of Q {limit:g}; the most that works is {reachable:.3g} dB, or narrow the bandwidth"
     )
