@@ -2,10 +2,25 @@
 
 from __future__ import annotations
 
-from synth.topology import multiple_feedback, non_inverting
+from synth.topology import charge_amplifier, inverting, multiple_feedback, non_inverting, transimpedance
 from synth.topology.base import SectionTopology, Slot, Topology
 
 SECTIONS: dict[str, SectionTopology] = {t.name: t for t in (multiple_feedback.TOPOLOGY,)}
-GAINS: dict[str, Topology] = {t.name: t for t in (non_inverting.TOPOLOGY, non_inverting.DAMPED)}
+FIRST_STAGES: dict[str, Topology] = {
+    t.name: t for t in (inverting.TOPOLOGY, transimpedance.TOPOLOGY, charge_amplifier.TOPOLOGY)
+}
+GAINS: dict[str, Topology] = {t.name: t for t in (non_inverting.TOPOLOGY, non_inverting.DAMPED)} | FIRST_STAGES
 
-__all__ = ["GAINS", "SECTIONS", "SectionTopology", "Slot", "Topology", "multiple_feedback", "non_inverting"]
+__all__ = [
+    "FIRST_STAGES",
+    "GAINS",
+    "SECTIONS",
+    "SectionTopology",
+    "Slot",
+    "Topology",
+    "charge_amplifier",
+    "inverting",
+    "multiple_feedback",
+    "non_inverting",
+    "transimpedance",
+]
