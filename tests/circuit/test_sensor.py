@@ -6,9 +6,11 @@ import numpy as np
 import pytest
 
 from synth import circuit
-from synth.circuit.sensor import first_order_corner, sensor_elements, sensor_network
+from synth.circuit.sensor import sensor_network, terminal_network
+from synth.circuit.sensor_rolloff import first_order_corner
 from synth.errors import CircuitError
-from synth.spec import Rolloff, Sensor
+from synth.spec import Motional, Rolloff, Sensor
+from tests.support.networks import K, check_matches_reference, scattered
 
 F = np.geomspace(1e2, 1e7, 51)
 
@@ -80,18 +82,75 @@ def test_a_source_of_resistance_is_its_thevenin_equivalent() -> None:
     np.testing.assert_allclose(circuit.injected_voltages(network, "sig", [1e3])[:, -1], 1e3, rtol=1e-12)
 
 
-def test_a_table_has_no_circuit() -> None:
-    rolloff = Rolloff("table", points=((1.0, 1.0), (2.0, 0.9), (3.0, 0.8)))
-    with pytest.raises(CircuitError, match="a rolloff of kind table has no circuit"):
-        list(sensor_elements(Sensor(scale=1.0, input_unit="A", rolloff=(rolloff,)), "in"))
+def test_a_table_of_a_high_pass_is_the_high_pass() -> None:
+    """Rows of a first-order high-pass, magnitudes only: its phase follows (minimum phase)."""
+    f = np.geomspace(10e3, 200e3, 25)
+    want = 1j * f / 48e3 / (1 + 1j * f / 48e3)
+    table = Rolloff("table", points=tuple(zip(f.tolist(), np.abs(want).tolist(), strict=True)))
+    np.testing.assert_allclose(gain(table, f=f), want, rtol=2e-3)
+
+
+def impedance(sensor: Sensor) -> np.ndarray:
+    """Impedance at the terminals by the engine [ohm]."""
+    network = terminal_network(sensor, 27.0)
+    return circuit.injected_voltages(network, "sig", F)[:, network.unknowns.index("sig")]
+
+
+S = 2j * np.pi * F
+MOTIONAL = Motional(resistance=2e3, inductance=0.1, capacitance=1e-10)
+SOURCES = {
+    "transformer": (
+        Sensor(scale=3.0, input_unit="A", burden=50.0, magnetizing_inductance=5e-3),
+        1 / (1 / 50.0 + 1 / (S * 5e-3)),
+        3.0 * S * 5e-3 / (50.0 + S * 5e-3),
+    ),
+    "motional": (
+        Sensor(scale=3.0, input_unit="A", motional=MOTIONAL, capacitance=1e-9),
+        1 / (S * 1e-9 + 1 / (2e3 + S * 0.1 + 1 / (S * 1e-10))),
+        3.0 / (1 + S * 1e-9 * (2e3 + S * 0.1 + 1 / (S * 1e-10))),
+    ),
+    "current": (
+        Sensor(scale=3.0, input_unit="W", output="current", resistance=1e6, capacitance=20e-12),
+        1 / (1e-6 + S * 20e-12),
+        3.0 / (1e-6 + S * 20e-12),
+    ),
+    "charge": (
+        Sensor(scale=3.0, input_unit="N", output="charge", resistance=1e9, capacitance=1e-9),
+        1 / (1e-9 + S * 1e-9),
+        3.0 * S / (1e-9 + S * 1e-9),
+    ),
+}
+
+
+@pytest.mark.parametrize("kind", SOURCES)
+def test_kinds_of_source_by_hand(kind: str) -> None:
+    """Impedance and open-circuit response of each network, noise 4kT Re Z, and the same by compiled elimination."""
+    sensor, z, response = SOURCES[kind]
+    network = terminal_network(sensor, 27.0)
+    np.testing.assert_allclose(impedance(sensor), z, rtol=1e-8)
+    np.testing.assert_allclose(circuit.response(network, F), response, rtol=1e-8)
+    np.testing.assert_allclose(circuit.noise(network, F).density ** 2, 4 * K * 300.15 * z.real, rtol=1e-8)
+    check_matches_reference(network, scattered(network, 1, 3, 0.05), F)
 
 
 @pytest.mark.parametrize(
-    ("rolloff", "message"),
+    ("sensor", "message"),
     [
-        (Rolloff("resonant", frequency=1e3, q=1.0), "a rolloff of kind resonant has no corner"),
+        (
+            Sensor(scale=1.0, input_unit="W", output="current", inductance=1e-3),
+            "sensor.inductance does not belong to a source of current; give its resistance and capacitance",
+        ),
+        (
+            Sensor(scale=1.0, input_unit="A", motional=MOTIONAL, inductance=1e-3),
+            "sensor.inductance has no place beside sensor.motional; add it to motional.inductance",
+        ),
     ],
 )
-def test_corner_of_a_kind_without_one(rolloff: Rolloff, message: str) -> None:
+def test_sources_without_a_circuit(sensor: Sensor, message: str) -> None:
     with pytest.raises(CircuitError, match=message):
-        first_order_corner(rolloff)
+        terminal_network(sensor, 27.0)
+
+
+def test_corner_of_a_kind_without_one() -> None:
+    with pytest.raises(CircuitError, match="a rolloff of kind resonant has no corner"):
+        first_order_corner(Rolloff("resonant", frequency=1e3, q=1.0))
