@@ -30,7 +30,7 @@ _COLUMNS = {  # of a list of a kind: title -> figure
 def op_amp_table(lines: Sequence[OpAmpLine], query: OpAmpQuery) -> str:
     """Op amps, one a line, with their noise at the frequency asked for."""
     if not lines:
-        return "no op amp of the catalogs fits all that is asked; ask less, or add a catalog of your own\n"
+        return "no op amp of the catalogs fits all of that; ask less, or add your own catalog\n"
     where = "white" if query.frequency is None else f"at {format_si(query.frequency, 'Hz')}"
     order = "slowest first" if query.frequency is None else "quietest first"
     columns = {

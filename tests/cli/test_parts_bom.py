@@ -86,7 +86,7 @@ def test_parts_that_fit_are_what_was_asked(capsys: Capture) -> None:
         assert one["voltage_noise"] <= 5e-9
         assert one["technology"] == "bipolar"
     assert json.loads(synth(capsys, "parts", "--min-gbw", "100 GHz", "--json").out) == []
-    assert "no op amp of the catalogs fits" in synth(capsys, "parts", "--min-gbw", "100 GHz").out
+    assert "no op amp of the catalogs fits all" in synth(capsys, "parts", "--min-gbw", "100 GHz").out
 
 
 def test_a_part_whole(capsys: Capture) -> None:
@@ -134,7 +134,6 @@ def test_a_catalog_with_mistakes_tells_all_of_them(capsys: Capture, tmp_path: Pa
     ("arguments", "words"),
     [
         (("NE5543",), ('"NE5543"', "nearest: NE5534")),
-        (("--min-gbw", "10"), ()),
         (("--min-gbw", "10 kV"), ("min-gbw", "expected Hz")),
         (("--technology", "valve"), ("technology", "bipolar, JFET, CMOS")),
         (("--kind", "valves"), ("valves", "op-amps, resistors")),
@@ -143,11 +142,7 @@ def test_a_catalog_with_mistakes_tells_all_of_them(capsys: Capture, tmp_path: Pa
     ],
 )
 def test_parts_that_cannot_be_shown(capsys: Capture, arguments: tuple[str, ...], words: tuple[str, ...]) -> None:
-    shown = synth(capsys, "parts", *arguments)
-    if words:
-        refused(shown, *words)
-    else:
-        assert shown.status == 0
+    refused(synth(capsys, "parts", *arguments), *words)
 
 
 def test_bom_of_one_folder_is_its_bill(capsys: Capture, tmp_path: Path) -> None:
