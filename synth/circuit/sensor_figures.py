@@ -102,12 +102,16 @@ def insertion_impedance(sensor: Sensor, frequency: float) -> float:
 
 
 def on_virtual_ground(chain: Chain, stage: Stage) -> bool:
-    """True where a stage takes the current of its source: its input node is an amplifier's (-), its (+) on ground."""
-    for ref in stage.parts:
-        part = chain.part(ref)
-        if part.kind == "op-amp" and part.nodes[0] == GROUND and part.nodes[1] == stage.input_node:
-            return True
-    return False
+    """True where a stage takes the current of its source: its input leads to an amplifier's (-).
+
+    It leads there directly or through one resistor of the stage.
+    """
+    parts = [chain.part(ref) for ref in stage.parts]
+    led = {stage.input_node}
+    for part in parts:
+        if part.kind == "resistor" and stage.input_node in part.nodes:
+            led |= set(part.nodes)
+    return any(part.kind == "op-amp" and part.nodes[1] in led - {GROUND} for part in parts)
 
 
 def stage_gain(chain: Chain, stage: Stage, network: Network, frequency: float) -> complex:

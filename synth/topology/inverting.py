@@ -43,3 +43,22 @@ def magnitude(ratio: float, frequency: float, gain_bandwidth: float, dc_gain: fl
     """
     open_loop = dc_gain / complex(1.0, frequency * dc_gain / gain_bandwidth)
     return abs(1 / (1 + (1 + ratio) / open_loop))
+
+
+def resistor_ratio(gain: float, frequency: float, gain_bandwidth: float, dc_gain: float) -> float | None:
+    """RF/RIN for a closed-loop gain magnitude at a frequency; None where the amplifier does not reach it.
+
+    Example:
+        >>> ratio = resistor_ratio(10.0, 1e5, 80e6, 1e6)
+        >>> round(ratio * magnitude(ratio, 1e5, 80e6, 1e6), 9)
+        10.0
+    """
+    ratio = gain
+    for _ in range(60):
+        reached = ratio * magnitude(ratio, frequency, gain_bandwidth, dc_gain)
+        if abs(reached / gain - 1) < 1e-12:
+            break
+        ratio *= gain / reached
+        if ratio > 20 * gain:
+            return None
+    return ratio
