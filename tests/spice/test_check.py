@@ -54,7 +54,7 @@ def test_check_gives_the_figures_of_the_design(designs: Designs, spec: Path) -> 
     before, after = read_json(folder), checked(folder)
     old, new = numbers(before), numbers(after)
     assert old.keys() == new.keys()
-    largest = {key: 0.0 for key in {name.rpartition("[")[0] for name in old}}
+    largest = dict.fromkeys({name.rpartition("[")[0] for name in old}, 0.0)
     for name, value in old.items():
         largest[name.rpartition("[")[0]] = max(largest[name.rpartition("[")[0]], abs(value))
     for name, value in old.items():
@@ -96,10 +96,8 @@ def test_an_edit_shows_in_the_report(designs: Designs, tmp_path: Path) -> None:
     after = checked(folder)
     assert after["realized"]["gain_db"] - before["realized"]["gain_db"] == pytest.approx(6.0, abs=0.3)
     stage = next(part["stage"] for part in before["parts"] if part["ref"] == ref)
-    moved = {
-        a["name"] for a, b in zip(after["stages"], before["stages"], strict=True) if abs(a["gain"] / b["gain"] - 1) > 0.1
-    }
-    assert moved == {stage}
+    pairs = zip(after["stages"], before["stages"], strict=True)
+    assert {a["name"] for a, b in pairs if abs(a["gain"] / b["gain"] - 1) > 0.1} == {stage}
 
 
 @pytest.mark.spice

@@ -177,14 +177,14 @@ def test_a_node_that_a_simulator_joins_with_another_gives_no_netlist(
     folder = tmp_path / "edited"
     folder.mkdir()
     (folder / "design.json").write_text((source / "design.json").read_text().replace('"s1m"', f'"{name}"'))
-    with pytest.raises(CircuitError, match="the same as .* to a simulator; rename it"):
+    with pytest.raises(CircuitError, match=r"the same as .* to a simulator; rename it"):
         api.netlist(api.load_design(folder))
 
 
 def test_elements_that_a_simulator_joins_give_no_netlist(demo: api.Design) -> None:
     first, *others = demo.network().elements
     network = replace(demo.network(), elements=(first, replace(first, name=first.name.upper()), *others))
-    with pytest.raises(CircuitError, match="the same as .* to a simulator; rename one of them"):
+    with pytest.raises(CircuitError, match=r"the same as .* to a simulator; rename one of them"):
         circuit.netlist_text(network, "title", (), 1e5)
 
 

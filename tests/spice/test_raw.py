@@ -75,7 +75,7 @@ def test_binary_of_two_analyses() -> None:
 
 
 def test_trouble_is_seen() -> None:
-    with pytest.raises(AssertionError, match="1k2k|R1|rror"):
+    with pytest.raises(AssertionError, match=r"[Ee]rror"):
         run_ngspice(LOW_PASS.replace("R1 in out 1000", "R1 in out\nQ1 nowhere"))
 
 

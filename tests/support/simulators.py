@@ -96,7 +96,7 @@ def run_ngspice(netlist: str) -> Run:
 
 
 def trouble(printed: str) -> list[str]:
-    """Lines of a simulator's output that speak of an error or a warning; its notes are none (start-up files are off)."""
+    """Lines of a simulator's output that speak of an error or a warning; a note that a start-up file is off is none."""
     return [line for line in printed.splitlines() if TROUBLE.search(line) and not line.startswith("Note: ")]
 
 
