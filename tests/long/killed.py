@@ -97,9 +97,8 @@ def kill_designs(root: Path, kills: int, seed: int = 20) -> Outcome:
             counts["new" if is_new else "old"] += 1
             now = 1 - now if is_new else now
         else:
-            torn.append(
-                f"kill {k}: {sorted(name for name in found if found[name] != wanted[now].get(name))} of neither"
-            )
+            strange = sorted(name for name in found if found[name] not in (wanted[0].get(name), wanted[1].get(name)))
+            torn.append(f"kill {k}: {len(found)} files, neither old nor new: {strange}")
     _check_that_the_next_run_tidies_up(specs[1 - now], folder, wanted[1 - now])
     return Outcome(kills, counts["old"], counts["new"], tuple(torn), too_late)
 
