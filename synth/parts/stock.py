@@ -10,7 +10,7 @@ from __future__ import annotations
 import csv
 import math
 import re
-import string
+from collections import Counter
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -28,12 +28,13 @@ from synth.spec.files import read_text
 
 COLUMNS = ("kind", "value", "quantity")
 LARGEST_QUANTITY = 999_999_999
-_WHAT = "a list of stocked parts, CSV with the header kind,value,quantity,"
-_KINDS: Mapping[str, PartKind] = {
-    "resistor": "resistor", "resistors": "resistor", "r": "resistor",
-    "capacitor": "capacitor", "capacitors": "capacitor", "c": "capacitor",
-    "op-amp": "op-amp", "op-amps": "op-amp", "op amp": "op-amp", "opamp": "op-amp", "u": "op-amp",
-}  # fmt: skip
+_WHAT = "a list of stocked parts, CSV with the header kind,value,quantity"
+_SPELLINGS: Mapping[PartKind, str] = {
+    "resistor": "resistors r",
+    "capacitor": "capacitors c",
+    "op-amp": "op-amps opamp u",
+}
+_KINDS = {name: kind for kind, others in _SPELLINGS.items() for name in (kind, *others.split())} | {"op amp": "op-amp"}
 _UNITS = {"resistor": "ohm", "capacitor": "F"}
 _LETTERS = {"resistor": "R", "capacitor": "C", "op-amp": "U"}
 _ORDER = {"resistor": 0, "capacitor": 1, "op-amp": 2}
@@ -123,7 +124,7 @@ def load_drawer(path: Path) -> Drawer:
     """
     columns: tuple[int, ...] | None = None
     found: dict[tuple[PartKind, Value], Item] = {}
-    for number, raw in enumerate(read_text(path, _WHAT[:-1]).splitlines(), start=1):
+    for number, raw in enumerate(read_text(path, _WHAT).splitlines(), start=1):
         line = re.sub(r"(?:^|\s)#.*$", "", raw).strip()
         if not line:
             continue
@@ -137,8 +138,8 @@ def load_drawer(path: Path) -> Drawer:
         kind, value, quantity = (cells[column] for column in columns)
         item = _item(kind, value, quantity, where)
         key = _key(item.kind, item.value)
-        before = found.get(key)
-        found[key] = item if before is None else replace(before, quantity=before.quantity + item.quantity)
+        first = found.get(key, replace(item, quantity=0))
+        found[key] = replace(first, quantity=first.quantity + item.quantity)
         if found[key].quantity > LARGEST_QUANTITY:
             raise SpecError(f"{where}: quantity adds up to more than {LARGEST_QUANTITY}; correct the quantity")
     if not found:
@@ -170,10 +171,8 @@ def _item(kind: str, value: str, quantity: str, where: str) -> Item:
     if known is None:
         raise SpecError(f"{where}: kind {show(kind)}: must be resistor, capacitor or op-amp; correct it")
     if not re.fullmatch(r"[0-9]{1,9}", quantity):
-        raise SpecError(
-            f"{where}: quantity {show(quantity)}: must be a whole number from 0 to {LARGEST_QUANTITY}; write how many "
-            "parts there are"
-        )
+        wanted = f"must be a whole number from 0 to {LARGEST_QUANTITY}; write how many there are"
+        raise SpecError(f"{where}: quantity {show(quantity)}: {wanted}")
     return Item(known, _value(known, value, where), int(quantity))
 
 
@@ -233,25 +232,28 @@ def exhausted(drawer: Drawer, short: Iterable[Shortage]) -> Drawer:
     return drawer
 
 
+def affords(drawer: Drawer, needs: Iterable[tuple[PartKind, Value]]) -> bool:
+    """Whether the drawer holds all of some parts at once, given as (kind, value), a value as often as it is needed."""
+    counts = Counter(_key(kind, value) for kind, value in needs)
+    return all(drawer.quantity(*key) >= count for key, count in counts.items())
+
+
 def remaining(
     drawer: Drawer, parts: Sequence[Part], models: Mapping[str, OpAmp] | None = None, boards: int = 1
 ) -> Drawer:
     """The drawer after parts were taken from it; what is short ends at 0.  Arguments as of `shortages`."""
     used = {key: len(refs) * boards for key, refs in _needs(parts, models or {}).items()}
-    items = []
-    for item in drawer.items:
-        left = item.quantity - used.get(_key(item.kind, item.value), 0)
-        items.append(replace(item, quantity=max(left, 0)))
+    left = (item.quantity - used.get(_key(item.kind, item.value), 0) for item in drawer.items)
+    items = (replace(item, quantity=max(n, 0)) for item, n in zip(drawer.items, left, strict=True))
     return Drawer(drawer.source, tuple(items))
 
 
 def shortages(
     parts: Sequence[Part], drawer: Drawer, models: Mapping[str, OpAmp] | None = None, boards: int = 1
 ) -> tuple[Shortage, ...]:
-    """What the parts of a chain need beyond the drawer: resistors, capacitors, op amp packages, each by value.
+    """What the parts of a whole chain need beyond the drawer: resistors, capacitors, op amp packages, each by value.
 
     Args:
-        parts: of the whole chain, `Chain.parts`.
         models: `Chain.models`, which say the type number to order for a package; without them it is the type.
         boards: how many such chains are built.
     """
@@ -293,9 +295,8 @@ def _order_type(units: Sequence[Part], model: OpAmp | None) -> str:
     """The smallest package that holds the units of one reference, as the bill orders it."""
     if model is None:
         return str(units[0].value)
-    letters = [letter for letter in (_package(unit.ref)[1] for unit in units) if letter]
-    needed = max((string.ascii_uppercase.index(letter) + 1 for letter in letters), default=1)
-    for least in (max(needed, 2), needed) if letters else (1,):
+    needed = max(" ABCDEFGH".find(_package(unit.ref)[1] or " ") for unit in units)  # 0: a package of its own
+    for least in (max(needed, 2), needed) if needed else (1,):
         for size, order in model.packages:
             if size >= least:
                 return order
@@ -305,11 +306,9 @@ def _order_type(units: Sequence[Part], model: OpAmp | None) -> str:
 def _alternative(kind: PartKind, value: Value, missing: int, left: Drawer, models: Mapping[str, OpAmp]) -> Value | None:
     enough = [item.value for item in left.items if item.kind == kind and item.quantity >= missing]
     if isinstance(value, str):
-        related = {
-            order.upper() for model in models.values() for _, order in model.packages
-            if value in {name.upper() for _, name in model.packages}
-        }  # fmt: skip
-        return next((other for other in enough if str(other).upper() in related - {value}), None)
+        families = ({order.upper() for _, order in model.packages} for model in models.values())
+        related = {order for family in families if value in family for order in family - {value}}
+        return next((other for other in enough if str(other).upper() in related), None)
     numbers = [other for other in enough if not isinstance(other, str) and other > 0 and _same(other) != value]
     if not numbers or value <= 0:
         return None

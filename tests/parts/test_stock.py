@@ -17,6 +17,7 @@ from synth.parts.passives import capacitor_stock, coupling_stock, resistor_stock
 from synth.parts.stock import (
     Drawer,
     Item,
+    affords,
     exhausted,
     load_drawer,
     remaining,
@@ -264,6 +265,14 @@ def test_exhausted_and_remaining(tmp_path: Path) -> None:
     left = remaining(held, parts)
     assert [item.quantity for item in left.items] == [3, 0, 8]
     assert exhausted(held, ()) == held
+
+
+def test_a_drawer_affords_values_as_often_as_it_holds_them(tmp_path: Path) -> None:
+    held = drawer(tmp_path, "R,4k7,2\nC,1n,1\nU,LM358,1\n")
+    assert affords(held, [("resistor", 4700.0), ("resistor", 4700.0), ("capacitor", 1e-9), ("op-amp", "lm358")])
+    assert not affords(held, [("capacitor", 1e-9), ("capacitor", 1e-9)])
+    assert not affords(held, [("resistor", 1e-9)])
+    assert affords(held, [])
 
 
 # Ten drawers, from rich to bare, and a chain of two parts each of 1.1 kohm and 1.2 nF and one of 12 kohm: whether it
