@@ -89,8 +89,7 @@ def transimpedance_draft(
     product, with the sensor's own impedance on the input.
 
     Args:
-        target: `gain` in V/A.
-        frequency: [Hz] centre; ambient: [degC]; sensor: with output = "current".
+        target: `gain` in V/A; frequency: [Hz] centre; ambient: [degC]; sensor: with output = "current".
 
     Raises:
         InfeasibleError: the gain is more, or less, than the stage can give here; names the one that works.
@@ -127,8 +126,7 @@ def charge_draft(
     RF is the largest stocked resistor that bias current allows; the corner lies at a thirtieth of the centre or lower.
 
     Args:
-        target: `gain` in V/C.
-        frequency: [Hz] centre; ambient: [degC]; sensor: with output = "charge".
+        target: `gain` in V/C; frequency: [Hz] centre; ambient: [degC]; sensor: with output = "charge".
 
     Raises:
         InfeasibleError: the gain is more, or less, than the stage can give here; names the one that works.
@@ -232,10 +230,6 @@ def _check_output(sensor: Sensor, output: str, what: str) -> None:
         )
 
 
-# ---------------------------------------------------------------------------------------------------------------
-# Figures of one stage behind its sensor, from the exact circuit
-
-
 def stage_chain(draft: Draft, site: Site, factor: float = 1.0) -> Chain:
     """Sensor and stage alone, the amplifier's gain-bandwidth product times a factor."""
     around = Surroundings(site.frequency, site.ambient, site.sensor, None, 0.0)
@@ -275,10 +269,6 @@ def first_stage_noise(draft: Draft, site: Site) -> float:
     density = circuit.noise(network, [site.frequency]).density[0]
     gain = abs(circuit.response(network, [site.frequency])[0] / sensor_response(site.sensor, [site.frequency])[0])
     return float(density / gain)
-
-
-# ---------------------------------------------------------------------------------------------------------------
-# The search
 
 
 def _compensated(draft: Draft, site: Site) -> Draft:
@@ -382,10 +372,6 @@ def largest_first_stage_gain(topology: str, site: Site) -> float:
             "impedance on its input; take another type"
         )
     return largest
-
-
-# ---------------------------------------------------------------------------------------------------------------
-# The trim of a chain's gain in its first stage
 
 
 def first_stage_options(draft: Draft, stocks: Stocks) -> tuple[tuple[Mapping[str, float], ...], FloatArray]:
