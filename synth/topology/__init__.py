@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-from synth.topology import charge_amplifier, inverting, multiple_feedback, non_inverting, transimpedance
+from synth.topology import charge_amplifier, inverting, multiple_feedback, non_inverting, shelving, transimpedance
 from synth.topology.base import SectionTopology, Slot, Topology
 
 SECTIONS: dict[str, SectionTopology] = {t.name: t for t in (multiple_feedback.TOPOLOGY,)}
 FIRST_STAGES: dict[str, Topology] = {
     t.name: t for t in (inverting.TOPOLOGY, transimpedance.TOPOLOGY, charge_amplifier.TOPOLOGY)
 }
-GAINS: dict[str, Topology] = {t.name: t for t in (non_inverting.TOPOLOGY, non_inverting.DAMPED)} | FIRST_STAGES
+GAINS: dict[str, Topology] = {
+    t.name: t for t in (non_inverting.TOPOLOGY, non_inverting.DAMPED, *shelving.TOPOLOGIES, *FIRST_STAGES.values())
+}
 
 __all__ = [
     "FIRST_STAGES",
@@ -22,5 +24,6 @@ __all__ = [
     "inverting",
     "multiple_feedback",
     "non_inverting",
+    "shelving",
     "transimpedance",
 ]
