@@ -32,6 +32,7 @@ if TYPE_CHECKING:
     import control
 
 log = logging.getLogger(__name__)
+BUILDS = 10_000
 FloatArray = NDArray[np.float64]
 ComplexArray = NDArray[np.complex128]
 
@@ -109,11 +110,12 @@ class Design:
         return control.zpk(zeros, poles, gain)
 
 
-def design(spec: Spec, seed: int = 0) -> Design:
+def design(spec: Spec, builds: int = BUILDS, seed: int = 0) -> Design:
     """Design a chain for a spec.
 
     Args:
         spec: what is asked, from `load_spec` or `parse_spec`.
+        builds: how many builds to draw for ranges and yield, 0 for none.
         seed: of every random draw.
 
     Raises:
@@ -129,7 +131,7 @@ def design(spec: Spec, seed: int = 0) -> Design:
     with _naming(spec, "parts.op_amps: "):
         chosen = select(spec.parts.op_amps, entries) if spec.parts.op_amps else tuple(entries.values())
     with _naming(spec):
-        found = plan(spec, tuple(entry.op_amp for entry in chosen), stocks_for(spec))
+        found = plan(spec, tuple(entry.op_amp for entry in chosen), stocks_for(spec), builds, seed)
     log.info("chosen: %s", found.candidates[0].description)
     record = DesignRecord(
         spec, seed, _digests(spec), found.chain, found.family, found.order, found.verification, found.candidates
@@ -183,7 +185,8 @@ def check(given: Design | Path | str) -> Design:
         given: a design, or the folder of one.
     """
     old = given if isinstance(given, Design) else load_design(given)
-    verdict = verify(old.chain, old.spec)
+    drawn = old.verification.builds
+    verdict = verify(old.chain, old.spec, drawn.count if drawn is not None else 0, old.record.seed)
     if not old.edited:  # what the planner had to say still holds
         verdict = replace(verdict, cautions=old.verification.cautions)
     return replace(old, record=replace(old.record, verification=verdict))

@@ -91,6 +91,7 @@ def new(
 def design(
     spec: Annotated[Path, typer.Argument(help="Spec file, TOML.", show_default=False, readable=False)],
     out: Annotated[Path | None, typer.Option(help="Folder to write the design into.", show_default=False)] = None,
+    builds: Annotated[int, typer.Option(help="Builds to draw; 0 for none.", min=0, max=1_000_000)] = 10_000,
     seed: Annotated[int, typer.Option(help="Seed of every random draw.", min=0)] = 0,
     force: Force = False,
     as_json: AsJson = False,
@@ -101,7 +102,7 @@ def design(
     asked = api.load_spec(spec)
     if out is not None:
         api.check_folder(out, asked, force)
-    made = api.design(asked, seed)
+    made = api.design(asked, builds, seed)
     if out is not None:
         api.save_design(made, out, force)
     _show(made, as_json)

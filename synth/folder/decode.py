@@ -12,6 +12,7 @@ from typing import get_args
 import numpy as np
 
 from synth.errors import FolderError, SpecError
+from synth.folder.builds import decode_builds
 from synth.folder.document import DESIGN_FILE, Document, load_document, named
 from synth.folder.migrate import migrate
 from synth.folder.reader import Node
@@ -40,7 +41,8 @@ PART_KINDS: dict[str, PartKind] = {"resistor": "resistor", "capacitor": "capacit
 
 TOP = (
     "version", "title", "seed", "spec", "input_unit", "inputs", "family", "order", "chain", "models", "sensor_model",
-    "stages", "parts", "response", "realized", "noise", "requirements", "candidates", "cautions", "seal",
+    "stages", "parts", "response", "realized", "noise", "requirements", "builds",
+    "candidates", "cautions", "seal",
 )  # fmt: skip
 CHAIN = ("center_frequency", "ambient", "load_resistance", "load_capacitance")
 MODEL_ABOVE_ZERO = ("gain_bandwidth", "dc_gain", "output_resistance")
@@ -243,6 +245,7 @@ def _verification(top: Node) -> Verification:
         stages=tuple(_stage_result(stage) for stage in top.nodes("stages", STAGE)),
         requirements=tuple(_requirement(node) for node in top.nodes("requirements", REQUIREMENT)),
         cautions=top.texts("cautions"),
+        builds=decode_builds(top),
     )
 
 

@@ -8,6 +8,7 @@ from dataclasses import fields
 import numpy as np
 
 from synth.errors import FolderError, QuantityError
+from synth.folder.builds import encode_builds
 from synth.folder.document import DESIGN_FILE, Document, plain, to_text
 from synth.folder.seal import seal_of
 from synth.folder.structure import UNITS, chain_problem, line_problem
@@ -48,6 +49,7 @@ def encode(record: DesignRecord) -> Document:
         "realized": _realized(found.realized),
         "noise": _noise(found.noise),
         "requirements": [_requirement(requirement) for requirement in found.requirements],
+        "builds": encode_builds(found.builds),
         "candidates": [_candidate(candidate) for candidate in record.candidates],
         "cautions": list(found.cautions),
     }

@@ -19,7 +19,7 @@ class Requirement:
         at_least, at_most: limits in `unit`; None where that side is free; both None when not judged.
         unit: "Hz", "dB", "V", "" ...
         nominal: of the nominal build, None when not judged.
-        low, high: range over builds, None until builds are drawn.
+        low, high: range that holds 99 % of builds with 95 % confidence, None where builds have no figure.
         margin: distance to the nearest limit in `unit`, negative when not met, None when not judged.
         met: True, False, or None for not judged.
         note: why it is not judged, or where the figure was taken.
@@ -143,8 +143,45 @@ class SensorModel:
 
 
 @dataclass(frozen=True, slots=True)
+class BuildYield:
+    """Share of builds that meet one requirement, and what spreads its figure.
+
+    Attributes:
+        name: of the requirement; counted: False where a trim takes care of it.
+        share: of builds that meet it; low, high: its 95 % interval (Clopper-Pearson).
+        causes: (what was drawn, share of the figure's variance), largest first.
+    """
+
+    name: str
+    counted: bool
+    share: float
+    low: float
+    high: float
+    causes: tuple[tuple[str, float], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Builds:
+    """What the drawn builds do.
+
+    Attributes:
+        count: builds drawn; seed: of the draws; trim: state of trim in which they are judged.
+        share: of builds that meet everything counted together; low, high: its 95 % interval.
+        yields: by requirement.
+    """
+
+    count: int
+    seed: int
+    trim: str
+    share: float
+    low: float
+    high: float
+    yields: tuple[BuildYield, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Verification:
-    """Everything the judges say about one chain against one spec."""
+    """Everything the judges say about one chain against one spec; `builds` is None where none were drawn."""
 
     response: ResponseTable
     noise: NoiseTable
@@ -153,6 +190,7 @@ class Verification:
     stages: tuple[StageResult, ...]
     requirements: tuple[Requirement, ...]
     cautions: tuple[str, ...]
+    builds: Builds | None = None
 
     @property
     def all_met(self) -> bool:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from synth.model.judgement import Realized
 from synth.model.record import Candidate, DesignRecord
+from synth.output.builds_block import build_lines
 from synth.output.requirement_table import requirement_table, verdict_text
 from synth.output.stage_blocks import stage_lines
 from synth.output.text import GAP, align_units, ascii_line, heading, percent_text, quantity_text, table, wrap
@@ -26,6 +27,8 @@ def report_text(record: DesignRecord) -> str:
     lines += wrap(_chain_text(record), "chain     ")
     lines += heading("Stages") + stage_lines(record)
     lines += heading("Requirements") + requirement_table(verification.requirements)
+    if verification.builds is not None:
+        lines += heading("Builds") + build_lines(record)
     lines += heading("Realized") + _realized_lines(record)
     lines += heading("Noise") + _noise_lines(record)
     lines += heading("Headroom at full scale") + _headroom_lines(record)

@@ -21,9 +21,11 @@ from synth.quantity import format_si
 from synth.spec import Spec
 from synth.topology.place import Stocks
 from synth.verification import relative_margin, verify
+from synth.verification.cautions import cautions
 
 MOST_SECTIONS = 6
 MOST_RIPPLE = 1.0  # [dB] of a Chebyshev chain, however much is allowed
+QUICK_BUILDS = 2500  # drawn for each candidate
 MOST_JUDGED = 8  # candidates built in full before the best of them is taken
 
 
@@ -58,8 +60,12 @@ class _Built:
         return min(missed, default=0.0)
 
 
-def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks) -> Plan:
+def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0, seed: int = 0) -> Plan:
     """The chain of least order that meets every judged requirement, or the one that misses least.
+
+    Args:
+        builds: how many builds to draw for the chain chosen, 0 for none; candidates get a few of them.
+        seed: of the draws.
 
     Raises:
         InfeasibleError: no chain can be built; says which requirement binds and the nearest value that works.
@@ -75,6 +81,8 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks) -> Plan:
     lost: list[Candidate] = []
     failure: InfeasibleError | None = None
     for proposal in _proposals(spec):
+        if _hopeless(proposal, built):
+            continue
         screened = _screen(spec, proposal)
         if screened is not None:
             lost.append(screened)
@@ -82,7 +90,7 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks) -> Plan:
         for split in splits:
             try:
                 made = build_chain(shop, proposal.pairs, split)
-                verdict = verify(made.chain, spec)
+                verdict = verify(made.chain, spec, min(builds, QUICK_BUILDS), seed)
                 verdict = replace(verdict, cautions=(*made.notes, *verdict.cautions))
                 built.append(_Built(proposal, made.chain, verdict))
             except (InfeasibleError, CircuitError) as error:
@@ -95,7 +103,19 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks) -> Plan:
             break
     if not built:
         raise failure or _no_proposal(spec, lost)
-    return _choose(built, lost)
+    chosen = _choose(built, lost)
+    if builds <= QUICK_BUILDS:
+        return chosen
+    notes = chosen.verification.cautions[: len(chosen.verification.cautions) - len(cautions(spec, chosen.chain))]
+    verdict = verify(chosen.chain, spec, builds, seed)
+    return replace(chosen, verification=replace(verdict, cautions=(*notes, *verdict.cautions)))
+
+
+def _hopeless(proposal: _Proposal, built: list[_Built]) -> bool:
+    """Of an order whose gentlest family misses by its yield alone, families of higher Q spread more."""
+    same = [b for b in built if len(b.proposal.pairs) == len(proposal.pairs)]
+    highest = max(pair.q for pair in proposal.pairs)
+    return any(b.missed() == {"yield"} and max(p.q for p in b.proposal.pairs) <= highest for b in same)
 
 
 def _choose(built: list[_Built], lost: list[Candidate]) -> Plan:
@@ -203,7 +223,8 @@ def _no_proposal(spec: Spec, lost: list[Candidate]) -> InfeasibleError:
         ),
         default=0.0,
     )
+    count = spec.filter.sections or MOST_SECTIONS
     return InfeasibleError(
         f"{spec.source}: target.reject of {reject.by:.4g} dB at {format_si(reject.frequency, 'Hz')} is beyond "
-        f"{spec.filter.sections or MOST_SECTIONS} sections of Q {limit:g}; the most that works is {reachable:.3g} dB, or narrow the bandwidth"
+        f"{count} sections of Q {limit:g}; the most that works is {reachable:.3g} dB, or narrow the bandwidth"
     )

@@ -20,7 +20,7 @@ HAZARDS = (
 )
 
 
-def cautions(spec: Spec, chain: Chain) -> tuple[str, ...]:
+def cautions(spec: Spec, chain: Chain, drawn: bool = False) -> tuple[str, ...]:
     """Hazards that the spec shows, and what the figures leave open."""
     found = [text for pattern, text in HAZARDS if re.search(pattern, spec.title, re.IGNORECASE)]
     total = _voltage_gain_db(spec)
@@ -40,7 +40,12 @@ def cautions(spec: Spec, chain: Chain) -> tuple[str, ...]:
                     f"{stage.name}: the spread of {stage.op_amp}'s gain-bandwidth alone moves its frequency "
                     f"{100 * shift:.2g} %, of {100 * allowed:.2g} % allowed"
                 )
-    found.append("figures are of the nominal build; tolerances are not in them")
+    if drawn:
+        found.append(
+            "builds spread output level, band, rejects and ripple; noise, delay and margins are of the nominal build"
+        )
+    else:
+        found.append("figures are of the nominal build; tolerances are not in them")
     return tuple(found)
 
 

@@ -11,6 +11,7 @@ from synth.circuit.sensor import sensor_network
 from synth.model.chain import Chain, Stage
 from synth.model.judgement import Realized, SensorModel, StageResult, Verification
 from synth.spec import Spec
+from synth.verification.builds.judge import judge_builds
 from synth.verification.cautions import cautions
 from synth.verification.figures import noise_table, realized, response_table
 from synth.verification.headroom import Excursion, excursions
@@ -19,8 +20,11 @@ from synth.verification.requirements import derived, judged, not_judged
 MARGIN_SPAN = (1e-3, 1e5)  # of the centre: where loop gains are searched for their unity crossings
 
 
-def verify(chain: Chain, spec: Spec) -> Verification:
+def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verification:
     """All figures of a chain and the verdict on every requirement.
+
+    Args:
+        builds: how many builds to draw, 0 for the nominal one alone; seed: of the draws.
 
     Raises:
         CircuitError: the chain has no solution, or is no bandpass.
@@ -35,14 +39,16 @@ def verify(chain: Chain, spec: Spec) -> Verification:
         circuit.phase_margin(network, a.ref, center * MARGIN_SPAN[0], center * MARGIN_SPAN[1])
         for a in network.amplifiers
     )
-    requirements = (
-        *judged(spec, network, table, band, noise),
-        *derived(found, margins, band),
-        *not_judged(spec),
-    )
+    requirements = (*judged(spec, network, table, band, noise), *derived(found, margins, band))
+    drawn = None
+    if builds > 0:
+        requirements, drawn = judge_builds(chain, spec, requirements, builds, seed)
+    requirements = (*requirements, *not_judged(spec, drawn is not None))
     stages = _stage_results(chain, network, band, found, margins, spec.target.full_scale)
     model = sensor_model(chain)
-    return Verification(table, noise, band, model, stages, requirements, cautions(spec, chain))
+    return Verification(
+        table, noise, band, model, stages, requirements, cautions(spec, chain, drawn is not None), drawn
+    )
 
 
 def sensor_model(chain: Chain) -> SensorModel:

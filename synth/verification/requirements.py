@@ -86,13 +86,13 @@ def derived(found: tuple[Excursion, ...], margins: tuple[circuit.Margin, ...], b
     yield limited("slowest decay", "1/s", -slowest.real, at_least=0.0, note="of the closed loops; negative grows")
 
 
-def not_judged(spec: Spec) -> Iterator[Requirement]:
+def not_judged(spec: Spec, drawn: bool = False) -> Iterator[Requirement]:
     """Keys of the spec that no judge treats: they are reported as such, never as met."""
     target = spec.target
     asked = [
         ("accuracy", "", target.accuracy, "after calibration, at full scale"),
         ("accuracy at smallest", "", target.accuracy_smallest, "after calibration"),
-        ("yield", "", target.required_yield, "share of builds that meet everything"),
+        ("yield", "", None if drawn else target.required_yield, "share of builds that meet everything"),
         ("signal tolerance", "", target.signal_tolerance, "gain where the signal wanders"),
     ]
     for name, unit, value, note in asked:
@@ -100,7 +100,7 @@ def not_judged(spec: Spec) -> Iterator[Requirement]:
             yield Requirement(name, unit, note=note)
     sections = [
         ("interference", "", bool(spec.interference), "its part in the reading; its overload is judged"),
-        ("temperature", "degC", spec.environment.temperature is not None, "figures are at ambient"),
+        ("temperature", "degC", spec.environment.temperature is not None and not drawn, "figures are at ambient"),
         ("detector", "", spec.detector is not None, "the chain is judged up to its output"),
         ("calibration", "", spec.calibration is not None, "figures are before calibration"),
         ("resonator", "", spec.resonator is not None, "drive level and pulling"),
