@@ -15,7 +15,7 @@ from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.quantity import format_si
 from synth.rounding.section import Variant
-from synth.topology import non_inverting
+from synth.topology import Topology, non_inverting, shelving
 from synth.topology.place import Draft, Stocks, Surroundings, place
 
 FEEDBACK_RANGE = (1e3, 22e3)  # [ohm] light for the amplifier, small against its input capacitance
@@ -28,6 +28,7 @@ SOURCE_RATIO = 20.0  # least ratio of bias resistor to source resistance
 STEPS = 2  # of the series either side of the wanted feedback resistor
 TRIMS = 4
 GOOD = 1e-4  # of the gain: no better pair is looked for
+DAMPED: dict[str, Topology] = {non_inverting.TOPOLOGY.name: non_inverting.DAMPED, **shelving.DAMPED}
 
 
 def gain_draft(
@@ -46,6 +47,16 @@ def gain_draft(
     leg = min(max(quiet, FEEDBACK_RANGE[0] / wanted, GROUND_LEG_RANGE[0]), FEEDBACK_RANGE[1] / wanted)
     leg = min(max(leg, GROUND_LEG_RANGE[0]), GROUND_LEG_RANGE[1])
     rg, rf = _ratio_pair(wanted, leg, stocks)
+    chosen = {"CC": coupling_capacitor(bias, stocks, frequency), "RB": bias, "RG": rg, "RF": rf}
+    return Draft(non_inverting.TOPOLOGY, target, op_amp, chosen)
+
+
+def coupling_capacitor(bias: float, stocks: Stocks, frequency: float) -> float:
+    """The smallest stocked coupling capacitor [F] whose corner lies far enough below a frequency [Hz].
+
+    Raises:
+        InfeasibleError: none is large enough.
+    """
     coupling = COUPLING_RATIO / (2 * math.pi * frequency * bias)
     values = stocks.coupling.values
     larger = values[values >= coupling * (1 - 1e-9)]
@@ -54,12 +65,11 @@ def gain_draft(
             f"no stocked coupling capacitor reaches {format_si(coupling, 'F')} for {format_si(bias, 'ohm')} at "
             f"{format_si(frequency, 'Hz')}; raise target.center_frequency or take an amplifier of less bias current"
         )
-    chosen = {"CC": float(larger[0]), "RB": bias, "RG": rg, "RF": rf}
-    return Draft(non_inverting.TOPOLOGY, target, op_amp, chosen)
+    return float(larger[0])
 
 
 def damped(draft: Draft, inductance: float, stocks: Stocks) -> Draft:
-    """The gain stage with a damper across its input, for a source of some inductance [H]."""
+    """The stage with a damper across its input, for a source of some inductance [H]."""
     assert draft.op_amp is not None
     resistor, capacitor = non_inverting.damper(inductance, draft.op_amp)
     values, capacitors = stocks.resistors.values, stocks.coupling.values
@@ -67,7 +77,7 @@ def damped(draft: Draft, inductance: float, stocks: Stocks) -> Draft:
         "RD": float(values[np.argmin(np.abs(np.log(values / resistor)))]),
         "CD": float(capacitors[np.argmin(np.abs(np.log(capacitors / capacitor)))]),
     }
-    return replace(draft, topology=non_inverting.DAMPED, values={**draft.values, **chosen})
+    return replace(draft, topology=DAMPED[draft.topology.name], values={**draft.values, **chosen})
 
 
 def bias_resistor(gain: float, op_amp: OpAmp, stocks: Stocks, source_resistance: float) -> float:
@@ -136,18 +146,16 @@ def trim_chain(
     """Move the chain's exact gain at the centre onto `gain` [V per input unit].
 
     One stage cannot do it finely: ratios of a geometric series fall on the series again.  The last gain stage is
-    moved together with another one, or, where there is none, with a section that has other values as good.
+    moved together with another one, or with a section that has other values as good; where there is none, as beside a
+    lone pre-emphasis stage whose values are bound by its shape, two sections are moved.
 
     Args:
         variants: for a section's place in `drafts`, its other values of the same quality.
 
     Raises:
-        InfeasibleError: there is no gain stage.
+        InfeasibleError: there is neither a gain stage nor a section with variants.
     """
     trimmed = list(drafts)
-    gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain"]
-    if not gains:
-        raise InfeasibleError("the chain has no gain stage to trim; ask for more gain")
     best, best_error = tuple(trimmed), math.inf
     for _ in range(TRIMS):
         reached = chain_gain(place(trimmed, stocks, around))
@@ -156,25 +164,29 @@ def trim_chain(
             best, best_error = tuple(trimmed), error
         if best_error < GOOD:
             break
-        first = _gain_lever(trimmed, gains[-1], gain / reached, stocks)
-        second = _second_lever(trimmed, gains, variants, stocks)
+        first, second = _levers(trimmed, variants, stocks, gain / reached)
         for lever, k in zip((first, second), _best_pair(first.factors, second.factors, gain / reached), strict=True):
             trimmed[lever.index] = replace(trimmed[lever.index], values=lever.values[k])
     return best
 
 
-def _second_lever(
-    drafts: Sequence[Draft], gains: Sequence[int], variants: Mapping[int, Sequence[Variant]], stocks: Stocks
-) -> _Lever:
-    if len(gains) > 1:
-        return _gain_lever(drafts, gains[-2], 1.0, stocks)
-    if not variants:
-        return _Lever(gains[-1], (drafts[gains[-1]].values,), np.ones(1))
-    place_ = max(variants)
-    now = drafts[place_].values
-    current = next((v.gain for v in variants[place_] if v.values == now), variants[place_][0].gain)
-    options = [v.values for v in variants[place_]]
-    return _Lever(place_, tuple(options), np.array([v.gain / current for v in variants[place_]]))
+def _levers(
+    drafts: Sequence[Draft], variants: Mapping[int, Sequence[Variant]], stocks: Stocks, factor: float
+) -> tuple[_Lever, _Lever]:
+    """The two that are moved together: gain stages from the last, then sections from the last."""
+    gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain"]
+    found = [_gain_lever(drafts, k, factor if k == gains[-1] else 1.0, stocks) for k in gains[:-3:-1]]
+    found += [_section_lever(drafts, k, variants[k]) for k in sorted(variants, reverse=True)[: 2 - len(found)]]
+    if not found:
+        raise InfeasibleError("the chain has no gain stage to trim; ask for more gain")
+    still = _Lever(found[0].index, found[0].values, np.ones(1))
+    return found[0], found[1] if len(found) > 1 else replace(still, values=(drafts[found[0].index].values,))
+
+
+def _section_lever(drafts: Sequence[Draft], index: int, variants: Sequence[Variant]) -> _Lever:
+    now = drafts[index].values
+    current = next((v.gain for v in variants if v.values == now), variants[0].gain)
+    return _Lever(index, tuple(v.values for v in variants), np.array([v.gain / current for v in variants]))
 
 
 def _gain_lever(drafts: Sequence[Draft], index: int, factor: float, stocks: Stocks) -> _Lever:
