@@ -22,7 +22,8 @@ from synth.parts import listing
 from synth.parts.check import check_catalog
 from synth.parts.op_amps import load_op_amps, select
 from synth.parts.passives import capacitor_stock, coupling_stock, resistor_stock
-from synth.planning import plan
+from synth.parts.stock import load_drawer
+from synth.planning import plan, plan_from_drawer
 from synth.spec import Spec, load_spec, parse_spec, spec_to_dict, starter_spec
 from synth.spec.files import read_text
 from synth.topology.place import Stocks
@@ -131,7 +132,11 @@ def design(spec: Spec, builds: int = BUILDS, seed: int = 0) -> Design:
     with _naming(spec, "parts.op_amps: "):
         chosen = select(spec.parts.op_amps, entries) if spec.parts.op_amps else tuple(entries.values())
     with _naming(spec):
-        found = plan(spec, tuple(entry.op_amp for entry in chosen), stocks_for(spec), builds, seed)
+        op_amps, stocks = tuple(entry.op_amp for entry in chosen), stocks_for(spec)
+        if spec.stock_file is None:
+            found = plan(spec, op_amps, stocks, builds, seed)
+        else:
+            found = plan_from_drawer(spec, op_amps, stocks, load_drawer(spec.stock_file), builds, seed)
     log.info("chosen: %s", found.candidates[0].description)
     record = DesignRecord(
         spec, seed, _digests(spec), found.chain, found.family, found.order, found.verification, found.candidates
@@ -168,7 +173,7 @@ def stocks_for(spec: Spec) -> Stocks:
 
 def _digests(spec: Spec) -> dict[str, str]:
     """sha256 of the files that went in, by name; nothing for a spec that came from text."""
-    files = [_spec_file(spec), *spec.catalog_files]
+    files = [_spec_file(spec), *spec.catalog_files, spec.stock_file]
     return {f.name: hashlib.sha256(f.read_bytes()).hexdigest() for f in files if f is not None and f.is_file()}
 
 

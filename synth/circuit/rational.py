@@ -267,14 +267,19 @@ def _candidates(poles: int, table: _Table) -> Iterator[_Shape]:
                 yield _polished(_Shape(start, 1, 0, origin), table)
     if 2 * poles + 1 > table.u.size:
         return
+    choices: dict[tuple[int, int], tuple[float, ComplexArray, ComplexArray]] = {}
     for angle in (0.2, math.pi):
         found = relocated(table.u, table.level, starting_poles(poles, table.u, angle))
-        choices = sorted(numerators(table.u, table.level, found), key=lambda choice: choice[0])
-        for _, origin, zeros in choices[:NUMERATORS]:
-            shape = _polished(_shape(found, zeros, origin, table), table)
-            yield shape
-            if _worst(shape, table) < EXACT:
-                return
+        for score, origin, zeros in numerators(table.u, table.level, found):
+            key = (origin, zeros.size)
+            if key not in choices or score < choices[key][0]:
+                choices[key] = score, found, zeros
+    ranked = sorted(choices.items(), key=lambda item: (item[1][0], item[0]))
+    for (origin, _), (_, found, zeros) in ranked[:NUMERATORS]:
+        shape = _polished(_shape(found, zeros, origin, table), table)
+        yield shape
+        if _worst(shape, table) < EXACT:
+            return
 
 
 def _shape(poles: ComplexArray, zeros: ComplexArray, origin: int, table: _Table) -> _Shape:

@@ -123,14 +123,15 @@ def _within_stock(values: Mapping[str, FloatArray], trial: Trial) -> NDArray[np.
 def _neighbourhood(ideal: Mapping[str, FloatArray], trial: Trial) -> dict[str, FloatArray]:
     """All combinations of the nearest stocked resistors around each ideal set, in one row."""
     grid, tuned = trial.stocks.resistors.values, trial.topology.tuned
-    picks = np.array(np.meshgrid(*[range(NEIGHBOURS)] * len(tuned), indexing="ij")).reshape(len(tuned), -1)
+    near = min(NEIGHBOURS, grid.size)
+    picks = np.array(np.meshgrid(*[range(near)] * len(tuned), indexing="ij")).reshape(len(tuned), -1)
     values = {}
     for key, v in ideal.items():
         if key not in tuned:
             values[key] = np.repeat(v, picks.shape[1])
             continue
         distance = np.abs(np.log(grid[None, :] / v[:, None]))
-        choices = grid[np.sort(np.argsort(distance, axis=1, kind="stable")[:, :NEIGHBOURS], axis=1)]
+        choices = grid[np.sort(np.argsort(distance, axis=1, kind="stable")[:, :near], axis=1)]
         values[key] = choices[:, picks[tuned.index(key)]].ravel()
     return values
 

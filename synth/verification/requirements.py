@@ -105,7 +105,6 @@ def not_judged(spec: Spec, drawn: bool = False) -> Iterator[Requirement]:
         ("calibration", "", spec.calibration is not None, "figures are before calibration"),
         ("resonator", "", spec.resonator is not None, "drive level and pulling"),
         ("sensor scale", "", _has_scale_spread(spec), "its tolerance and temperature coefficient"),
-        ("stock", "", spec.parts.stock is not None, "values and quantities of the drawer"),
     ]
     for name, unit, present, note in sections:
         if present:
