@@ -28,7 +28,7 @@ from synth.circuit.sensor_poles import numerators, relocated, starting_poles
 from synth.errors import CircuitError
 
 MOST_POLES = 8
-NUMERATORS = 3  # of one set of poles, that are tried in full
+NUMERATORS = 3  # of one order, that are tried in full
 EXACT = 1e-7  # relative error at which no better fit is looked for
 FLOOR = 1e-9  # error that counts as none in the information criterion
 PATIENCE = 2  # orders that may fail to improve before the search ends
