@@ -49,13 +49,13 @@ def spec_of(text: str) -> Spec:
 @functools.cache
 def design_of(text: str) -> api.Design:
     """The design for a text."""
-    return api.design(spec_of(text))
+    return api.design(spec_of(text), builds=0)
 
 
 @functools.cache
 def pickup() -> api.Design:
     """The design of the committed example."""
-    return api.design(api.load_spec(PICKUP))
+    return api.design(api.load_spec(PICKUP), builds=0)
 
 
 def environment(**more: str) -> dict[str, str]:

@@ -185,7 +185,7 @@ def own_spec(tmp_path: Path) -> Path:
 
 def test_a_spec_file_changed_between_load_and_save_is_refused(tmp_path: Path) -> None:
     path = own_spec(tmp_path)
-    made = api.design(api.load_spec(path))
+    made = api.design(api.load_spec(path), builds=0)
     path.write_text(changed(('"3 kHz"', '"4 kHz"')))
     with pytest.raises(SpecError, match=r"mine\.toml: has changed since it was read; load it again"):
         api.save_design(made, tmp_path / "made")
@@ -194,7 +194,7 @@ def test_a_spec_file_changed_between_load_and_save_is_refused(tmp_path: Path) ->
 
 def test_a_comment_changed_between_load_and_save_changes_nothing(tmp_path: Path) -> None:
     path = own_spec(tmp_path)
-    made = api.design(api.load_spec(path))
+    made = api.design(api.load_spec(path), builds=0)
     path.write_text("# a remark\n" + changed())
     api.save_design(made, tmp_path / "made")
     assert (tmp_path / "made" / "spec.toml").read_text().startswith("# a remark")
@@ -202,7 +202,7 @@ def test_a_comment_changed_between_load_and_save_changes_nothing(tmp_path: Path)
 
 def test_a_spec_file_deleted_between_load_and_save_is_written_from_its_figures(tmp_path: Path) -> None:
     path = own_spec(tmp_path)
-    made = api.design(api.load_spec(path))
+    made = api.design(api.load_spec(path), builds=0)
     path.unlink()
     api.save_design(made, tmp_path / "made")
     assert api.load_spec(tmp_path / "made" / "spec.toml") == made.spec
@@ -210,7 +210,7 @@ def test_a_spec_file_deleted_between_load_and_save_is_written_from_its_figures(t
 
 def test_a_spec_file_spoilt_between_load_and_save_is_refused(tmp_path: Path) -> None:
     path = own_spec(tmp_path)
-    made = api.design(api.load_spec(path))
+    made = api.design(api.load_spec(path), builds=0)
     path.write_bytes(b"\xff\xfe")
     with pytest.raises(SpecError, match=r"mine\.toml, line 1: is not UTF-8"):
         api.save_design(made, tmp_path / "made")
@@ -220,7 +220,7 @@ def test_a_spec_file_spoilt_between_load_and_save_is_refused(tmp_path: Path) -> 
 def test_a_spec_with_a_byte_order_mark_or_other_line_ends_can_be_saved(tmp_path: Path, form: str) -> None:
     path = tmp_path / "mine.toml"
     path.write_bytes(form.format(changed()).encode())
-    made = api.design(api.load_spec(path))
+    made = api.design(api.load_spec(path), builds=0)
     api.save_design(made, tmp_path / "made")
     assert api.load_spec(tmp_path / "made" / "spec.toml") == made.spec
 
@@ -230,7 +230,7 @@ def test_a_spec_from_text_has_nothing_to_do_with_a_file_of_its_name(
 ) -> None:
     monkeypatch.chdir(tmp_path)
     Path("spec.toml").write_text("something else")
-    made = api.design(api.parse_spec(changed()))
+    made = api.design(api.parse_spec(changed()), builds=0)
     assert "spec.toml" not in made.record.inputs
     api.save_design(made, "made")
     assert api.load_design("made").spec == made.spec
@@ -240,7 +240,7 @@ def test_a_spec_loaded_from_the_working_folder_is_copied(tmp_path: Path, monkeyp
     monkeypatch.chdir(tmp_path)
     text = "# my words\n" + changed()
     Path("mine.toml").write_text(text)
-    made = api.design(api.load_spec("mine.toml"))
+    made = api.design(api.load_spec("mine.toml"), builds=0)
     api.save_design(made, "made")
     assert Path("made/spec.toml").read_text() == text
     assert "mine.toml" in made.record.inputs
@@ -260,7 +260,7 @@ def test_errors_of_a_design_name_the_spec_and_the_key() -> None:
         ('[parts]\ncapacitors = { tolerance = "7 %" }\n', "parts.capacitors: "),
     ):
         with pytest.raises(ValueError, match=f"^given.toml: {key}"):
-            api.design(spec_of(changed(end=end)))
+            api.design(spec_of(changed(end=end)), builds=0)
 
 
 def test_write_text_never_overwrites(tmp_path: Path) -> None:
@@ -279,7 +279,7 @@ def test_digests_are_of_the_files_that_went_in(tmp_path: Path) -> None:
     (tmp_path / "mine.toml").write_text("# no parts\n")
     path = tmp_path / "spec.toml"
     path.write_text(changed(end='[parts]\ncatalogs = ["mine.toml"]\n'))
-    inputs = api.design(api.load_spec(path)).record.inputs
+    inputs = api.design(api.load_spec(path), builds=0).record.inputs
     for name in ("spec.toml", "mine.toml"):
         assert inputs[name] == hashlib.sha256((tmp_path / name).read_bytes()).hexdigest()
     assert design_of(changed()).record.inputs.get("given.toml") is None

@@ -21,11 +21,19 @@ class Outcome:
     err: str
 
 
+def nominal(arguments: tuple[object, ...]) -> list[str]:
+    """The arguments; a design draws no builds unless it is told how many, which is quick."""
+    texts = [str(a) for a in arguments]
+    if "design" in texts and len(texts) > texts.index("design") + 1 and "--builds" not in texts:
+        texts += ["--builds", "0"]
+    return texts
+
+
 def synth(capsys: pytest.CaptureFixture[str], *arguments: object) -> Outcome:
     """The command in this process."""
     capsys.readouterr()
     try:
-        status = run(lambda: app([str(a) for a in arguments], prog_name="synth"))
+        status = run(lambda: app(nominal(arguments), prog_name="synth"))
     except SystemExit as stop:
         status = int(stop.code or 0)
     captured = capsys.readouterr()
@@ -35,7 +43,7 @@ def synth(capsys: pytest.CaptureFixture[str], *arguments: object) -> Outcome:
 def process(*arguments: object, folder: Path, **more: str) -> Outcome:
     """The command in a process of its own, in a folder."""
     done = subprocess.run(
-        [*COMMAND, *(str(a) for a in arguments)],
+        [*COMMAND, *nominal(arguments)],
         cwd=folder,
         env=environment(**more),
         capture_output=True,

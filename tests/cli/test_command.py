@@ -15,7 +15,7 @@ import pytest
 from synth.folder import load_schema
 from synth.spec import load_spec
 from tests.api.made import COMMAND, PICKUP, PLAIN, changed, environment
-from tests.cli.running import Outcome, process, refused, synth
+from tests.cli.running import Outcome, nominal, process, refused, synth
 
 MET = changed()
 MISSED = changed(target="group_delay_variation = \"1 ns\"", end='[filter]\nsections = 1\n')
@@ -67,6 +67,10 @@ def test_status_2_of_a_wrong_use(asked: Path, capsys: pytest.CaptureFixture[str]
         outcome = synth(capsys, "design", asked, "--seed", seed)
         assert (outcome.status, outcome.out) == (2, "")
         assert "--seed" in outcome.err
+    for builds in ("-1", "many"):
+        outcome = synth(capsys, "design", asked, "--builds", builds)
+        assert (outcome.status, outcome.out) == (2, "")
+        assert "--builds" in outcome.err
 
 
 def test_a_process_has_the_same_status(tmp_path: Path) -> None:
@@ -151,6 +155,20 @@ def test_json_is_the_content_of_design_json_and_fits_its_schema(
     jsonschema.Draft202012Validator(load_schema()).validate(json.loads(checked.out))
 
 
+def test_builds_give_ranges_and_a_yield(asked: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    outcome = synth(capsys, "design", asked, "--json", "--builds", "500", "--seed", "3", "--out", tmp_path / "made")
+    document = json.loads(outcome.out)
+    jsonschema.Draft202012Validator(load_schema()).validate(document)
+    found = {r["name"]: r for r in document["requirements"]}
+    assert found["yield"]["met"] is (outcome.status == 0)
+    assert found["bandwidth"]["low"] < found["bandwidth"]["nominal"] < found["bandwidth"]["high"]
+    checked = synth(capsys, "check", tmp_path / "made", "--json")
+    again = {r["name"]: r for r in json.loads(checked.out)["requirements"]}
+    for name, requirement in found.items():
+        for key in ("low", "high", "nominal"):
+            assert again[name][key] == pytest.approx(requirement[key], rel=1e-6), (name, key)
+
+
 def test_json_of_a_missed_spec_has_status_1(asked: Path, capsys: pytest.CaptureFixture[str]) -> None:
     asked.write_text(MISSED)
     outcome = synth(capsys, "design", asked, "--json")
@@ -184,7 +202,7 @@ def test_help(command: tuple[str, ...], option: str, capsys: pytest.CaptureFixtu
     assert (outcome.status, outcome.err) == (0, "")
     assert outcome.out.startswith(" ".join(("Usage: synth", *command)))
     assert narrow(outcome.out)
-    design = ("--out", "--seed", "--force", "--json")
+    design = ("--out", "--builds", "--seed", "--force", "--json")
     options = {(): ("--verbose",), ("new",): ("--title", "--out"), ("design",): design, ("check",): ("--json",)}
     for word in options[command]:
         assert word in outcome.out
@@ -220,7 +238,7 @@ def test_design_logs_what_it_chose(
 def piped(folder: Path, *arguments: str) -> tuple[int, str]:
     """The command with a reader that has gone; its status and what it says on stderr."""
     with subprocess.Popen(
-        [*COMMAND, *arguments],
+        [*COMMAND, *nominal(arguments)],
         cwd=folder,
         env=environment(),
         stdout=subprocess.PIPE,
@@ -245,7 +263,7 @@ def test_a_closed_pipe_leaves_no_traceback(tmp_path: Path) -> None:
 def test_a_reader_that_takes_one_line(tmp_path: Path) -> None:
     (tmp_path / "asked.toml").write_text(MET)
     done = subprocess.run(
-        ["sh", "-c", '"$@" | head -1', "sh", *COMMAND, "design", "asked.toml", "--json"],
+        ["sh", "-c", '"$@" | head -1', "sh", *COMMAND, "design", "asked.toml", "--json", "--builds", "0"],
         cwd=tmp_path,
         env=environment(),
         capture_output=True,
@@ -261,7 +279,7 @@ def test_a_full_device_for_the_output(tmp_path: Path) -> None:
     (tmp_path / "asked.toml").write_text(MET)
     with open("/dev/full", "w") as full:
         done = subprocess.run(
-            [*COMMAND, "design", "asked.toml"],
+            [*COMMAND, "design", "asked.toml", "--builds", "0"],
             cwd=tmp_path,
             env=environment(),
             stdout=full,
