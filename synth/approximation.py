@@ -67,11 +67,11 @@ def half_power_frequency(poles: ComplexArray) -> float:
     def excess(w: float) -> float:
         return float(np.sum(np.log(np.abs(1j * w - poles) / np.abs(poles)))) - 0.5 * math.log(2)
 
-    low, high = 0.0, 10 * float(np.abs(poles).max())
-    grid = np.linspace(low, high, 2001)
-    k = int(np.flatnonzero([excess(w) < 0 for w in grid])[-1])
+    grid = np.linspace(0.0, 10 * float(np.abs(poles).max()), 2001)
+    loss = np.log(np.abs(1j * grid[:, None] - poles) / np.abs(poles)).sum(axis=1)
+    k = int(np.flatnonzero(loss < 0.5 * math.log(2))[-1])
     low, high = float(grid[k]), float(grid[k + 1])
-    for _ in range(80):
+    for _ in range(60):
         middle = 0.5 * (low + high)
         low, high = (middle, high) if excess(middle) < 0 else (low, middle)
     return 0.5 * (low + high)

@@ -1,8 +1,8 @@
 """Responses of many builds at many frequencies.
 
 Numerator and determinant of a circuit are polynomials in the frequency.  On a stretch of the jw axis they are
-interpolated from a few Chebyshev nodes [1]_, checked at frequencies held out, and the stretch is halved where the
-check fails; stretches too short to gain from interpolation are solved directly.
+interpolated from a few Chebyshev nodes [1]_, checked on a few builds at every frequency and on all builds at
+frequencies held out, and the stretch is halved where the first check fails; stretches too short to gain from interpolation are solved directly.
 
 References:
     .. [1] J.-P. Berrut, L. N. Trefethen, "Barycentric Lagrange interpolation", SIAM Review 46 (2004) 501.
@@ -20,6 +20,7 @@ from synth.errors import CircuitError
 
 NODES = 21
 HELD_OUT = 3
+FEW = 8  # builds that are checked at every frequency; the others are at those held out
 TOLERANCE = 1e-10  # of a response, relative to itself down to FLOOR of the largest in its stretch
 FLOOR = 1e-4  # 80 dB
 ROUNDING = 4 * float(np.finfo(float).eps)  # of the largest node value, in an interpolated value (measured)
@@ -71,7 +72,8 @@ def _stretch(program: Program, values: FloatArray, f: FloatArray, out: ComplexAr
     nodes = 0.5 * (low + high) - 0.5 * (high - low) * np.cos(np.pi * np.arange(NODES) / (NODES - 1))
     weights = _barycentric(nodes, f[where])
     s = _jw(np.concatenate([nodes, f[where][held]]))
-    if _interpolated(program, values[:, : min(8, values.shape[1])], s, weights, held)[1].any():
+    everywhere = _jw(np.concatenate([nodes, f[where]]))
+    if _interpolated(program, values[:, :FEW], everywhere, weights, np.arange(where.size))[1].any():
         middle = where.size // 2
         _stretch(program, values, f, out, where[:middle])
         _stretch(program, values, f, out, where[middle:])

@@ -10,6 +10,7 @@ from synth.approximation import PolePair
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import choose_section_circuit
+from synth.planning.emphasis import Emphasis, emphasis_notes, make_emphasis
 from synth.planning.partition import Partition, orders
 from synth.planning.reference import choose_references, reference_caution
 from synth.rounding import Section, damped, gain_draft, round_section, trim_chain
@@ -22,13 +23,14 @@ TRIM_ROOM = 1.05  # what the gain's trim may still move
 
 @dataclass(frozen=True, slots=True)
 class Workshop:
-    """What every proposal of one spec is built from; remembers the sections it has rounded."""
+    """What every proposal of one spec is built from; remembers the sections and shelves it has rounded."""
 
     spec: Spec
     op_amps: tuple[OpAmp, ...]
     stocks: Stocks
     attenuation: float
     rounded: dict[tuple[str, str, StageTarget], Section] = field(default_factory=dict)
+    emphases: dict[Partition, Emphasis] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,8 +55,9 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     Raises:
         InfeasibleError: a section or a gain stage has no stocked values.
     """
-    sections = _sections(shop, pairs, split.section_gain)
-    gains = _gains(shop, split)
+    emphasis = _emphasis(shop, split)
+    sections = _sections(shop, pairs, emphasis.split.section_gain)
+    gains = _gains(shop, emphasis)
     around = surroundings(shop.spec)
     best: tuple[float, tuple[Draft, ...]] | None = None
     for order in orders(len(gains), len(sections)):
@@ -67,12 +70,19 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     assert best is not None
     places = [k for k, draft in enumerate(best[1]) if draft.topology.kind == "bandpass"]
     variants = {k: section.variants for k, section in zip(places, sections, strict=True)}
-    note = ""
+    notes: tuple[str, ...] = ()
     if shop.spec.supply.negative is None:
         mended = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
-        around, note = replace(around, references=mended.references), reference_caution(mended)
+        around, notes = replace(around, references=mended.references), (reference_caution(mended),)
     trimmed = trim_chain(best[1], variants, shop.stocks, around, shop.spec.overall_gain)
-    return BuiltChain(place(trimmed, shop.stocks, around), (note,) if note else ())
+    notes = (*notes, *emphasis_notes(emphasis, trimmed, shop.stocks, around))
+    return BuiltChain(place(trimmed, shop.stocks, around), tuple(note for note in notes if note))
+
+
+def _emphasis(shop: Workshop, split: Partition) -> Emphasis:
+    if split not in shop.emphases:
+        shop.emphases[split] = make_emphasis(shop.spec, shop.op_amps, shop.stocks, split, shop.attenuation)
+    return shop.emphases[split]
 
 
 def _sections(shop: Workshop, pairs: Sequence[PolePair], section_gain: float) -> tuple[Section, ...]:
@@ -90,15 +100,22 @@ def _sections(shop: Workshop, pairs: Sequence[PolePair], section_gain: float) ->
     return tuple(sections)
 
 
-def _gains(shop: Workshop, split: Partition) -> tuple[Draft, ...]:
-    """Gain stages; the last carries the factor that makes good the sensor's loss, the reciprocal of what is left."""
-    spec = shop.spec
+def _gains(shop: Workshop, emphasis: Emphasis) -> tuple[Draft, ...]:
+    """Gain stages; the last carries the factor that makes good the sensor's loss, the reciprocal of what is left.
+
+    It is a shelf where a flat factor does not do.
+    """
+    spec, split = shop.spec, emphasis.split
     drafts = []
     for k, (gain, op_amp) in enumerate(zip(split.gains, split.op_amps, strict=True)):
-        factor = 1 / shop.attenuation if k == len(split.gains) - 1 else 1.0
+        last = k == len(split.gains) - 1
         source = (spec.sensor.resistance or 0.0) if k == 0 else 0.0
         center, ambient = spec.target.center_frequency, spec.environment.ambient
-        draft = gain_draft(StageTarget(gain, factor), op_amp, shop.stocks, center, ambient, source)
+        if last and emphasis.shelf is not None:
+            draft = emphasis.shelf.draft
+        else:
+            target = StageTarget(gain, emphasis.factor if last else 1.0)
+            draft = gain_draft(target, op_amp, shop.stocks, center, ambient, source)
         if k == 0 and spec.sensor.inductance is not None:
             draft = damped(draft, spec.sensor.inductance, shop.stocks)
         drafts.append(draft)

@@ -156,5 +156,5 @@ def test_rows_that_are_no_response(points: tuple[tuple[float, ...], ...], messag
 
 def test_rows_that_no_function_follows() -> None:
     gain = 10.0 ** np.random.default_rng(1).uniform(-1, 1, 40)
-    with pytest.raises(CircuitError, match=r"no response of up to 8 poles follows the table: its best fit is \d+ % off"):
+    with pytest.raises(CircuitError, match=r"no response of up to 8 poles follows the table: .* \d+ % off"):
         fit_table(rows(np.geomspace(1e3, 1e5, 40), gain))
