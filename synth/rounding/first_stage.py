@@ -33,6 +33,7 @@ DC_SHARE = 0.1  # [V] that bias current may shift the output by
 CORNER_RATIO = 30.0  # the corners of a charge amplifier lie this far below and above the centre
 SOURCE_RATIO = 20.0  # least ratio of an input resistor to the source's impedance
 ISOLATION_RANGE = (47.0, 1e3)  # [ohm] of a charge amplifier's input resistor
+SMALLEST_FEEDBACK = 220.0  # [ohm] that an amplifier drives easily
 INPUT_RANGE = (220.0, 22e3)  # [ohm] of an input resistor
 LARGEST_FEEDBACK = 220e3  # [ohm] of an inverting stage: beyond it strays weigh
 SMALLEST_CAPACITANCE = 0.99e-12  # [F] beyond it layout decides
@@ -109,7 +110,7 @@ def _transimpedance(target: StageTarget, site: Site) -> tuple[Maker, FloatArray]
         )
 
     grid = site.stocks.resistors.values
-    grid = grid[grid <= site.largest_path]
+    grid = grid[(grid >= SMALLEST_FEEDBACK) & (grid <= site.largest_path)]
     if grid.size == 0:
         raise InfeasibleError(
             f"the bias current of {site.op_amp.type} ({format_si(site.op_amp.bias_current, 'A')}) allows no stocked "

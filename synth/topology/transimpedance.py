@@ -40,7 +40,7 @@ TOPOLOGY = Topology(
 
 
 def feedback_capacitance(resistance: float, input_capacitance: float, gain_bandwidth: float) -> float:
-    """CF [F] for a phase margin of 45 degrees by straight lines, 52 in truth: its corner lies where the loop gain is one.
+    """CF [F] for a phase margin of 45 degrees by straight lines, 52 in truth: its corner is where the loop gain is one.
 
     (1 + sqrt(1 + 8 pi RF GBW Cin)) / (4 pi RF GBW), near sqrt(Cin/(2 pi RF GBW)) (Graeme, ch. 3).
 
