@@ -8,7 +8,7 @@ from collections.abc import Iterator
 from synth import circuit
 from synth.model.judgement import NoiseTable, Realized, Requirement, ResponseTable
 from synth.quantity import format_percent, format_si
-from synth.spec import Spec
+from synth.spec import Choose, Spec
 from synth.verification.figures import delay_variation, rejection, ripple
 from synth.verification.headroom import Excursion
 from synth.verification.settling import settling_time
@@ -105,6 +105,7 @@ def not_judged(spec: Spec, drawn: bool = False) -> Iterator[Requirement]:
         ("calibration", "", spec.calibration is not None, "figures are before calibration"),
         ("resonator", "", spec.resonator is not None, "drive level and pulling"),
         ("sensor scale", "", _has_scale_spread(spec), "its tolerance and temperature coefficient"),
+        ("preference", "", spec.choose != Choose(), "what is preferred, and how long is searched"),
     ]
     for name, unit, present, note in sections:
         if present:
