@@ -2,7 +2,8 @@
 
 Numerator and determinant of a circuit are polynomials in the frequency.  On a stretch of the jw axis they are
 interpolated from a few Chebyshev nodes [1]_, checked on a few builds at every frequency and on all builds at
-frequencies held out, and the stretch is halved where the first check fails; stretches too short to gain from interpolation are solved directly.
+frequencies held out, and the stretch is halved where the first check fails; stretches too short to gain from
+interpolation are solved directly.
 
 References:
     .. [1] J.-P. Berrut, L. N. Trefethen, "Barycentric Lagrange interpolation", SIAM Review 46 (2004) 501.
