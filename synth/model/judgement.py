@@ -99,7 +99,8 @@ class StageResult:
 
     Attributes:
         name: of the stage.
-        gain: signed where the phase is within 90 degrees of 0 (plus) or 180 (minus) [V/V].
+        gain: signed where the phase is within 90 degrees of 0 (plus) or 180 (minus) [V/V; V/A or V/C for a first
+            stage that takes a current or a charge].
         center_frequency, q: realized pole pair in the whole chain, None for a gain stage.
         level: [V] rms at full scale at the output of its fullest amplifier.
         peak: [V] largest voltage there: full scale and interference in the worst phase.

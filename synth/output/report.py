@@ -67,7 +67,8 @@ def _realized_lines(record: DesignRecord) -> list[str]:
     edges = f"{quantity_text(found.low_edge, 'Hz', 5)} to {quantity_text(found.high_edge, 'Hz', 5)}"
     unit = record.spec.sensor.input_unit
     lines = wrap(f"centre {center}, bandwidth {quantity_text(found.bandwidth, 'Hz')} (-3 dB at {edges})", GAP)
-    gains = f"gain {found.gain_db:.2f} dB re 1 V per {unit}, {found.voltage_gain_db:.2f} dB from the sensor's terminals"
+    taken = {"current": " re 1 V/A", "charge": " re 1 V/C"}.get(record.spec.sensor.output, "")
+    gains = f"gain {found.gain_db:.2f} dB re 1 V per {unit}, {found.voltage_gain_db:.2f} dB{taken} from its terminals"
     return lines + wrap(gains, GAP)
 
 

@@ -14,6 +14,7 @@ from synth.output.bill import value_code
 from synth.output.text import GAP, WIDTH, ascii_line, clip, flow, quantity_text, wrap
 
 _INDENT = "   "
+GAIN_UNITS = {"transimpedance": "ohm", "charge-amplifier": "V/C"}  # a factor for all others
 _VALUE_WIDTH = 16
 _COLUMN = 36
 
@@ -46,7 +47,9 @@ def _figures(stage: Stage, result: StageResult | None) -> list[str]:
     if stage.kind == "reference":
         return [f"{_INDENT}carries {quantity_text(result.level if result else None, 'V', 3)} rms at full scale"]
     gain = result.gain if result else None
-    items = [_figure("gain", _factor(gain), _factor(math.copysign(target.gain, gain or 1.0)))]
+    unit = GAIN_UNITS.get(stage.topology)
+    asked = math.copysign(target.gain, gain or 1.0)
+    items = [_figure("gain", _gain(gain, unit), _gain(asked, unit))]
     if target.pre_emphasis != 1:
         items.append(f"pre-emphasis {_factor(target.pre_emphasis)}")
     if target.center_frequency is not None:
@@ -59,6 +62,10 @@ def _figures(stage: Stage, result: StageResult | None) -> list[str]:
 
 def _figure(name: str, realized: str, asked: str) -> str:
     return f"{name} {realized} (asked {asked})"
+
+
+def _gain(value: float | None, unit: str | None) -> str:
+    return _factor(value) if unit is None else quantity_text(value, unit)
 
 
 def _factor(value: float | None) -> str:

@@ -23,6 +23,7 @@ GAIN_CEILING = 300.0  # of one stage: beyond it layout decides
 SLEW_RESERVE = 0.5  # of the slew rate, for the signal
 SMALLEST_STAGE_GAIN = 1.5
 USUAL_CAPACITANCE = 4.7e-10  # [F] the impedance level that a section's noise is guessed at
+SCORE_GRADES = (0.4, 1.0)  # effects of amplifier spreads, in units of what is tolerated
 UNITY_MARGIN = 50.0  # [degree] of phase at unity gain, that a section's amplifier should have
 LARGEST_SHIFT, LARGEST_LOSS = 0.12, 0.3  # of a section's frequency and Q by its amplifier: beyond it, no design
 
@@ -87,8 +88,8 @@ def section_circuits(
     """Circuits and amplifiers for a section of some Q, best first: by how much amplifier spreads move its pole pair.
 
     Finite gain-bandwidth and DC gain move frequency and Q; the spread of each counts, in units of what centre and
-    bandwidth tolerate.  A circuit that stays inside the tolerance beats one that does not, then fewer amplifiers win,
-    then the smaller effect in steps of 1.5, once below a tenth of the tolerance the quieter, then the lower current.
+    bandwidth tolerate, graded by `SCORE_GRADES`.  Within a grade fewer amplifiers win, then fewer parts, then the
+    smaller effect in steps of 1.5, once below a tenth of the tolerance the quieter, then the lower current.
     """
     ranked = []
     for topology in topologies:
@@ -98,7 +99,9 @@ def section_circuits(
             score = _spread_score(spec, op_amp, q, topology)
             if score is not None:
                 noise = section_noise(op_amp, spec.target.center_frequency, q, topology)
-                key = (score > 1, topology.amplifiers, _steps(max(score, 0.1) / 0.1), _steps(noise / 1e-9))
+                grade = sum(score > limit for limit in SCORE_GRADES)
+                effort = (topology.amplifiers, len(topology.slots))
+                key = (grade, *effort, _steps(max(score, 0.1) / 0.1), _steps(noise / 1e-9))
                 ranked.append(((*key, op_amp.supply_current, op_amp.type, topology.name), topology, op_amp))
     return tuple(SectionCircuit(row[1], row[2]) for row in sorted(ranked, key=lambda row: row[0]))
 

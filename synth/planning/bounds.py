@@ -8,7 +8,7 @@ import numpy as np
 
 from synth import circuit
 from synth.circuit.sensor import sensor_network
-from synth.errors import InfeasibleError
+from synth.errors import CircuitError, InfeasibleError
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import suits_sections
 from synth.planning.safe import at_least, at_most
@@ -24,16 +24,10 @@ def check_supported(spec: Spec) -> None:
     Raises:
         InfeasibleError: names the key and what can be designed instead.
     """
-    sensor = spec.sensor
-    unsupported = [
-        (sensor.output != "voltage", f'sensor.output = "{sensor.output}"', 'a sensor with output = "voltage"'),
-        (sensor.burden is not None, "sensor.burden", "sensor.resistance with a high-pass in sensor.rolloff"),
-        (sensor.motional is not None, "sensor.motional", "sensor.resistance, with its rolloff in sensor.rolloff"),
-        (any(r.kind == "table" for r in sensor.rolloff), 'sensor.rolloff.kind = "table"', "one of the other kinds"),
-    ]
-    for present, key, instead in unsupported:
-        if present:
-            raise InfeasibleError(f"{spec.source}: {key}: no chain can be designed for it; give {instead}")
+    try:
+        sensor_network(spec.sensor, spec.environment.ambient)
+    except CircuitError as error:
+        raise InfeasibleError(f"{spec.source}: sensor: {error}") from error
     topology = spec.filter.topology
     if topology is not None and topology not in SECTIONS:
         raise InfeasibleError(

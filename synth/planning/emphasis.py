@@ -21,6 +21,7 @@ from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import DEFAULT_ACCURACY, SMALLEST_STAGE_GAIN, Fit, gain_candidates
 from synth.planning.partition import Partition
+from synth.planning.source import stage_source
 from synth.quantity import format_percent, format_si
 from synth.rounding.gain import gain_draft
 from synth.rounding.shelving import PHASE_MARGIN, Left, Shelf, ShelfAim, Window, round_shelf
@@ -125,7 +126,7 @@ def make_emphasis(
 def _shelved(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, flat: Emphasis) -> Emphasis:
     slope, split = flat.slope, flat.split
     gain = max(split.gains[-1], GAIN_ROOM * _least_gain(slope))
-    source = (spec.sensor.resistance or 0.0) if len(split.gains) == 1 else 0.0
+    source = stage_source(spec) if len(split.gains) == 1 else 0.0
     aim = ShelfAim(
         slope.kind,
         StageTarget(gain, flat.factor),

@@ -7,11 +7,11 @@ import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
-from synth.circuit.network import BOLTZMANN, ZERO_CELSIUS
 from synth.errors import InfeasibleError
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import Fit, gain_candidates
 from synth.planning.safe import at_most
+from synth.planning.source import own_noise, stage_source
 from synth.quantity import format_si
 from synth.spec import Spec
 
@@ -37,7 +37,7 @@ def partitions(spec: Spec, op_amps: tuple[OpAmp, ...], gain: float, attenuation:
     Raises:
         InfeasibleError: no amplifier can be given gain here, or the gain is more than five stages carry.
     """
-    source = spec.sensor.resistance or 0.0
+    source = stage_source(spec)
     first = gain_candidates(spec, op_amps, source)
     if not first:
         raise InfeasibleError(
@@ -80,16 +80,14 @@ def noise_allowance(spec: Spec, attenuation: float, quietest: float) -> float:
     """Density [V/rtHz] that the first amplifier may have at its input.
 
     What the signal-to-noise ratio leaves after the source's own noise, less a reserve for the rest of the chain;
-    where the spec asks none, twice the quietest amplifier's.
+    where the spec asks none, or a first stage stands before, twice the quietest amplifier's.
     """
     asked = spec.target.signal_to_noise
-    if asked is None:
+    if asked is None or spec.sensor.output != "voltage":
         return 2 * quietest
     signal = spec.target.smallest * spec.sensor.scale * attenuation
     total = signal / 10 ** ((asked + RESERVE_DB) / 20) / math.sqrt(spec.target.bandwidth)
-    kelvin = spec.environment.ambient + ZERO_CELSIUS
-    source = spec.sensor.noise or math.sqrt(4 * BOLTZMANN * kelvin * (spec.sensor.resistance or 0.0))
-    return math.sqrt(max(total**2 - source**2, quietest**2))
+    return math.sqrt(max(total**2 - own_noise(spec) ** 2, quietest**2))
 
 
 def _carrying(fits: Sequence[Fit], gain: float, spec: Spec) -> Fit:

@@ -14,6 +14,7 @@ from synth.model.part import OpAmp
 from synth.model.record import Candidate
 from synth.planning.amplifiers import largest_q
 from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
+from synth.planning.front import choose_front
 from synth.planning.partition import partitions
 from synth.planning.safe import at_least
 from synth.planning.workshop import Workshop, build_chain
@@ -75,8 +76,9 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
     check_source_noise(spec)
     attenuation = sensor_gain(spec)
     gain = spec.overall_gain / spec.sensor.scale / attenuation
-    splits = partitions(spec, usable, gain, attenuation)
-    shop = Workshop(spec, usable, stocks, attenuation)
+    front = choose_front(spec, usable, stocks, gain)
+    splits = partitions(spec, usable, gain if front is None else gain / front.gain, attenuation)
+    shop = Workshop(spec, usable, stocks, attenuation, front)
     built: list[_Built] = []
     lost: list[Candidate] = []
     failure: InfeasibleError | None = None

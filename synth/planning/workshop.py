@@ -7,12 +7,16 @@ from dataclasses import dataclass, field, replace
 
 from synth import circuit
 from synth.approximation import PolePair
+from synth.circuit.dc_path import dc_path_problem
+from synth.errors import InfeasibleError
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.planning.amplifiers import choose_section_circuit
 from synth.planning.emphasis import Emphasis, emphasis_notes, make_emphasis
+from synth.planning.front import Front
 from synth.planning.partition import Partition, orders
 from synth.planning.reference import choose_references, reference_caution
+from synth.planning.source import insertion_note, stage_source
 from synth.rounding import Section, damped, gain_draft, round_section, trim_chain
 from synth.spec import Spec
 from synth.topology.place import Draft, Stocks, Surroundings, place
@@ -29,6 +33,7 @@ class Workshop:
     op_amps: tuple[OpAmp, ...]
     stocks: Stocks
     attenuation: float
+    front: Front | None
     rounded: dict[tuple[str, str, StageTarget], Section] = field(default_factory=dict)
     emphases: dict[Partition, Emphasis] = field(default_factory=dict)
 
@@ -58,10 +63,11 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     emphasis = _emphasis(shop, split)
     sections = _sections(shop, pairs, emphasis.split.section_gain)
     gains = _gains(shop, emphasis)
+    front = () if shop.front is None else (shop.front.draft,)
     around = surroundings(shop.spec)
     best: tuple[float, tuple[Draft, ...]] | None = None
     for order in orders(len(gains), len(sections)):
-        drafts = _in_order(order, gains, [section.draft for section in sections])
+        drafts = (*front, *_in_order(order, gains, [section.draft for section in sections]))
         reserve = _reserve(place(drafts, shop.stocks, around), shop.spec)
         if best is None or reserve > best[0] + 1e-9:
             best = (reserve, drafts)
@@ -75,8 +81,11 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
         mended = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
         around, notes = replace(around, references=mended.references), (reference_caution(mended),)
     trimmed = trim_chain(best[1], variants, shop.stocks, around, shop.spec.overall_gain)
-    notes = (*notes, *emphasis_notes(emphasis, trimmed, shop.stocks, around))
-    return BuiltChain(place(trimmed, shop.stocks, around), tuple(note for note in notes if note))
+    notes = (*notes, insertion_note(shop.spec), *emphasis_notes(emphasis, trimmed, shop.stocks, around))
+    chain = place(trimmed, shop.stocks, around)
+    if problem := dc_path_problem(chain):
+        raise InfeasibleError(f"{shop.spec.source}: no DC path for an input's bias current: {problem}")
+    return BuiltChain(chain, tuple(note for note in notes if note))
 
 
 def _emphasis(shop: Workshop, split: Partition) -> Emphasis:
@@ -109,14 +118,14 @@ def _gains(shop: Workshop, emphasis: Emphasis) -> tuple[Draft, ...]:
     drafts = []
     for k, (gain, op_amp) in enumerate(zip(split.gains, split.op_amps, strict=True)):
         last = k == len(split.gains) - 1
-        source = (spec.sensor.resistance or 0.0) if k == 0 else 0.0
+        source = stage_source(spec) if k == 0 else 0.0
         center, ambient = spec.target.center_frequency, spec.environment.ambient
         if last and emphasis.shelf is not None:
             draft = emphasis.shelf.draft
         else:
             target = StageTarget(gain, emphasis.factor if last else 1.0)
             draft = gain_draft(target, op_amp, shop.stocks, center, ambient, source)
-        if k == 0 and spec.sensor.inductance is not None:
+        if k == 0 and spec.sensor.inductance is not None and shop.front is None:
             draft = damped(draft, spec.sensor.inductance, shop.stocks)
         drafts.append(draft)
     return tuple(drafts)

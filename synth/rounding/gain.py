@@ -15,7 +15,7 @@ from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.quantity import format_si
 from synth.rounding.section import Variant
-from synth.topology import Topology, non_inverting, shelving
+from synth.topology import FIRST_STAGES, Topology, non_inverting, shelving
 from synth.topology.place import Draft, Stocks, Surroundings, place
 
 FEEDBACK_RANGE = (1e3, 22e3)  # [ohm] light for the amplifier, small against its input capacitance
@@ -174,7 +174,7 @@ def _levers(
     drafts: Sequence[Draft], variants: Mapping[int, Sequence[Variant]], stocks: Stocks, factor: float
 ) -> tuple[_Lever, _Lever]:
     """The two that are moved together: gain stages from the last, then sections from the last."""
-    gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain"]
+    gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain" and d.topology.name not in FIRST_STAGES]
     found = [_gain_lever(drafts, k, factor if k == gains[-1] else 1.0, stocks) for k in gains[:-3:-1]]
     found += [_section_lever(drafts, k, variants[k]) for k in sorted(variants, reverse=True)[: 2 - len(found)]]
     if not found:

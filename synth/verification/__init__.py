@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from synth.verification.headroom import rails
-from synth.verification.judge import match_pairs, sensor_model, verify
+from synth.verification.judge import match_pairs, verify
 from synth.verification.requirements import relative_margin
 
-__all__ = ["match_pairs", "rails", "relative_margin", "sensor_model", "verify"]
+__all__ = ["match_pairs", "rails", "relative_margin", "verify"]

@@ -24,7 +24,7 @@ def cautions(spec: Spec, chain: Chain, drawn: bool = False) -> tuple[str, ...]:
     """Hazards that the spec shows, and what the figures leave open."""
     found = [text for pattern, text in HAZARDS if re.search(pattern, spec.title, re.IGNORECASE)]
     total = _voltage_gain_db(spec)
-    if total > 80:
+    if total > 80 and spec.sensor.output == "voltage":
         found.append(
             f"{total:.0f} dB of gain at {format_si(chain.center_frequency, 'Hz')}: the layout is part of the circuit; "
             "keep output and input apart, give each stage its own decoupling"

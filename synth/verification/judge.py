@@ -7,9 +7,9 @@ import math
 import numpy as np
 
 from synth import circuit
-from synth.circuit.sensor import sensor_network
+from synth.circuit.sensor_figures import sensor_figures, stage_gain
 from synth.model.chain import Chain, Stage
-from synth.model.judgement import Realized, SensorModel, StageResult, Verification
+from synth.model.judgement import Realized, StageResult, Verification
 from synth.spec import Spec
 from synth.verification.builds.judge import judge_builds
 from synth.verification.cautions import cautions
@@ -45,22 +45,9 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verifica
         requirements, drawn = judge_builds(chain, spec, requirements, builds, seed)
     requirements = (*requirements, *not_judged(spec, drawn is not None))
     stages = _stage_results(chain, network, band, found, margins, spec.target.full_scale)
-    model = sensor_model(chain)
+    model = sensor_figures(chain.sensor, chain.center_frequency)
     return Verification(
         table, noise, band, model, stages, requirements, cautions(spec, chain, drawn is not None), drawn
-    )
-
-
-def sensor_model(chain: Chain) -> SensorModel:
-    """Poles, zeros and loss of the sensor's own response, terminals open."""
-    network = sensor_network(chain.sensor, chain.ambient)
-    center = chain.center_frequency
-    gain = abs(circuit.response(network, [center])[0]) / chain.sensor.scale
-    return SensorModel(
-        tuple(complex(p) for p in circuit.poles(network, center)),
-        tuple(complex(z) for z in circuit.zeros(network, center)),
-        float(gain),
-        0.0,
     )
 
 
@@ -82,7 +69,7 @@ def _stage_results(
         if stage.kind == "reference":
             results.append(_reference_result(stage, voltages[index[stage.output_node]], full_scale, margin))
             continue
-        ratio = voltages[index[stage.output_node]] / voltages[index[stage.input_node]]
+        ratio = stage_gain(chain, stage, network, chain.center_frequency)
         refs = [r for r in stage.parts if chain.part(r).kind == "op-amp"]
         fullest = max(refs, key=lambda r: excursion[r].peak)
         loop = min((margin[r] for r in refs), key=lambda m: m.phase_margin)
