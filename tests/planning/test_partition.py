@@ -29,7 +29,6 @@ from synth.topology import SECTIONS, non_inverting
 from tests.api.made import changed, spec_of
 from tests.support.networks import K, op_amp
 
-
 FRUGAL = {"supply_current": 1e-3}
 
 
