@@ -2,10 +2,32 @@
 
 from __future__ import annotations
 
-from synth.topology import charge_amplifier, inverting, multiple_feedback, non_inverting, shelving, transimpedance
+from synth.topology import (
+    akerberg_mossberg,
+    charge_amplifier,
+    delyiannis_friend,
+    dual_amplifier,
+    inverting,
+    multiple_feedback,
+    non_inverting,
+    shelving,
+    state_variable,
+    tow_thomas,
+    transimpedance,
+)
 from synth.topology.base import SectionTopology, Slot, Topology
 
-SECTIONS: dict[str, SectionTopology] = {t.name: t for t in (multiple_feedback.TOPOLOGY,)}
+SECTIONS: dict[str, SectionTopology] = {
+    t.name: t
+    for t in (
+        multiple_feedback.TOPOLOGY,
+        delyiannis_friend.TOPOLOGY,
+        dual_amplifier.TOPOLOGY,
+        tow_thomas.TOPOLOGY,
+        state_variable.TOPOLOGY,
+        akerberg_mossberg.TOPOLOGY,
+    )
+}
 FIRST_STAGES: dict[str, Topology] = {
     t.name: t for t in (inverting.TOPOLOGY, transimpedance.TOPOLOGY, charge_amplifier.TOPOLOGY)
 }
