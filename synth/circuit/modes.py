@@ -13,6 +13,7 @@ import numpy as np
 from synth.circuit.network import ComplexArray, FloatArray, Network, matrices
 from synth.errors import CircuitError
 
+ZERO = 1e-9  # of the reference: a pole nearer to zero is at zero
 FARTHEST = 1e7  # poles beyond this multiple of the reference are taken as infinite
 FAR = 1e3  # beyond this multiple of the reference a pole must prove itself
 
@@ -73,6 +74,18 @@ def resonant_pairs(s: ComplexArray) -> tuple[tuple[float, float], ...]:
     return tuple(sorted(pairs))
 
 
-def is_stable(s: ComplexArray) -> bool:
-    """True when every pole lies left of the imaginary axis."""
-    return bool(np.all(s.real < 0.0))
+def is_stable(s: ComplexArray, reference_frequency: float | None = None) -> bool:
+    """True when no pole lies right of the imaginary axis; one at zero, as of a charge held, is no instability.
+
+    Args:
+        s: poles [rad/s]; reference_frequency: [Hz], in which the rounding of a pole at zero is measured; None
+            allows no pole at zero.
+    """
+    if reference_frequency is None:
+        return bool(np.all(s.real < 0.0))
+    return bool(np.all(growth(s, reference_frequency) <= 0.0))
+
+
+def growth(s: ComplexArray, reference_frequency: float) -> FloatArray:
+    """Real parts of poles [1/s], those at zero but for rounding set to zero."""
+    return np.where(np.abs(s.real) < ZERO * _reference(reference_frequency), 0.0, s.real)

@@ -36,7 +36,7 @@ def stage_lines(record: DesignRecord) -> list[str]:
 
 
 def _heading(number: int, stage: Stage) -> list[str]:
-    pieces = [stage.name, stage.topology, stage.op_amp]
+    pieces = [piece for piece in (stage.name, stage.topology, stage.op_amp) if piece]
     if stage.kind not in stage.name:
         pieces.insert(1, stage.kind)
     return wrap(", ".join(pieces), f"{number:<{len(_INDENT)}}")

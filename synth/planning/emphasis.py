@@ -40,6 +40,7 @@ USUAL_POLE: dict[ShelfKind, float] = {"rising": 5.0, "falling": 1 / 8}  # of the
 EXTREME_ZERO: dict[ShelfKind, float] = {"rising": 0.15, "falling": 6.7}  # of the centre, for a sensor too steep
 GAIN_ROOM = 1.1  # over the least gain of a shelf
 MOST_TRIED = 8  # amplifiers
+USEFUL = 0.5  # of the tilt that a flat factor leaves: a shelf that leaves more is not worth its parts
 NOISE_POINTS = 41
 
 
@@ -146,6 +147,8 @@ def _shelved(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, flat: Empha
         )
     shelf = _best_shelf(aim, fits, stocks)
     assert shelf.draft.op_amp is not None
+    if shelf.measure > 1 and abs(shelf.left.tilt) > USEFUL * abs(slope.left.tilt):
+        raise InfeasibleError("a first-order shelf leaves most of it: the sensor resonates or falls too steeply")
     return replace(flat, split=_regained(split, gain, shelf.draft.op_amp), shelf=shelf)
 
 

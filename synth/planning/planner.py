@@ -6,18 +6,19 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
-from synth.approximation import DEFAULT_RIPPLE, FAMILIES, PolePair, bandpass_pairs
+from synth.approximation import FAMILIES, PolePair, bandpass_pairs
 from synth.errors import CircuitError, InfeasibleError
 from synth.model.chain import Chain
 from synth.model.judgement import Requirement, Verification
 from synth.model.part import OpAmp
 from synth.model.record import Candidate
 from synth.planning.amplifiers import largest_q
+from synth.planning.bend import build_on_target, proposed_ripple
 from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
 from synth.planning.front import choose_front
 from synth.planning.partition import partitions
 from synth.planning.safe import at_least
-from synth.planning.workshop import Workshop, build_chain
+from synth.planning.workshop import Workshop
 from synth.quantity import format_si
 from synth.spec import Spec
 from synth.topology.place import Stocks
@@ -25,7 +26,6 @@ from synth.verification import relative_margin, verify
 from synth.verification.cautions import cautions
 
 MOST_SECTIONS = 6
-MOST_RIPPLE = 1.0  # [dB] of a Chebyshev chain, however much is allowed
 QUICK_BUILDS = 2500  # drawn for each candidate
 MOST_JUDGED = 8  # candidates built in full before the best of them is taken
 
@@ -91,7 +91,7 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
             continue
         for split in splits:
             try:
-                made = build_chain(shop, proposal.pairs, split)
+                made = build_on_target(shop, proposal.family, proposal.pairs, split)
                 verdict = verify(made.chain, spec, min(builds, QUICK_BUILDS), seed)
                 verdict = replace(verdict, cautions=(*made.notes, *verdict.cautions))
                 built.append(_Built(proposal, made.chain, verdict))
@@ -135,7 +135,8 @@ def _candidate(entry: _Built, chosen: bool) -> Candidate:
     description = _describe(entry.proposal, entry.chain)
     if not missed:
         return Candidate(description, chosen)
-    worst = min(missed, key=relative_margin)
+    # builds of a chain that misses by itself say no more
+    worst = min([r for r in missed if r.name != "yield"] or missed, key=relative_margin)
     return Candidate(description, chosen, worst.name, _margin_text(worst))
 
 
@@ -154,14 +155,13 @@ def _describe(proposal: _Proposal, chain: Chain | None) -> str:
 def _proposals(spec: Spec) -> Iterator[_Proposal]:
     """Families and orders, least order first; what the spec insists on is kept."""
     target = spec.target
-    ripple = min(target.ripple or DEFAULT_RIPPLE, MOST_RIPPLE)
     families = (spec.filter.family,) if spec.filter.family is not None else FAMILIES
     counts = (spec.filter.sections,) if spec.filter.sections is not None else range(1, MOST_SECTIONS + 1)
     for count in counts:
         for family in families:
             if count == 1 and family != families[0]:
                 continue  # one section is the same in every family
-            pairs = bandpass_pairs(family, count, target.center_frequency, target.bandwidth, ripple)
+            pairs = bandpass_pairs(family, count, target.center_frequency, target.bandwidth, proposed_ripple(spec))
             yield _Proposal(family, pairs)
 
 

@@ -102,7 +102,9 @@ def _stocked(stocks: Stocks, value: float) -> float:
 def _effect(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks, ideal: float) -> tuple[float, bool]:
     """Gain at the centre with the references over the ideal one, and whether the whole is stable with them."""
     chain: Chain = place(drafts, stocks, around)
-    stable = circuit.is_stable(circuit.poles(circuit.build_network(chain), chain.center_frequency))
+    stable = circuit.is_stable(
+        circuit.poles(circuit.build_network(chain), chain.center_frequency), chain.center_frequency
+    )
     return chain_gain(chain) / ideal, stable
 
 

@@ -139,6 +139,4 @@ def _in_order(order: Sequence[str], gains: Sequence[Draft], sections: Sequence[D
 def _reserve(chain: Chain, spec: Spec) -> float:
     """Smallest ratio of what an amplifier can carry to what it must, over swing, slew and input range."""
     found = excursions(chain, circuit.build_network(chain), spec)
-    ratios = [min(e.allowed / e.peak, e.slew_allowed / e.slew) for e in found]
-    ratios += [e.input_allowed / e.input_peak for e in found if e.input_peak > 0]
-    return min(ratios)
+    return 1 / max(max(e.swing_use, e.slew_use, e.input_use) for e in found)

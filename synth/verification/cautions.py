@@ -30,9 +30,9 @@ def cautions(spec: Spec, chain: Chain, drawn: bool = False) -> tuple[str, ...]:
             "keep output and input apart, give each stage its own decoupling"
         )
     for stage in chain.stages:
-        model = chain.models[stage.op_amp]
         f0, q = stage.target.center_frequency, stage.target.q
         if f0 is not None and q is not None:
+            model = chain.models[stage.op_amp]
             shift = q * f0 / model.gain_bandwidth * model.gain_bandwidth_spread
             allowed = spec.target.center_tolerance * spec.target.bandwidth / spec.target.center_frequency
             if shift > 0.5 * allowed:

@@ -8,6 +8,7 @@ import numpy as np
 
 from synth import circuit
 from synth.errors import CircuitError
+from synth.model.chain import Chain
 from synth.model.judgement import Contributor, FloatArray, NoiseTable, Realized, ResponseTable
 from synth.spec import Spec
 
@@ -76,6 +77,13 @@ def realized(network: circuit.Network, table: ResponseTable, spec: Spec) -> Real
         20 * math.log10(terminal),
         tuple(complex(p) for p in circuit.poles(network, center)),
     )
+
+
+def nominal_band(chain: Chain, spec: Spec) -> Realized:
+    """Centre, bandwidth and gains of a chain, without the rest of its verdict."""
+    network = circuit.build_network(chain)
+    table = response_table(network, spec.target.center_frequency, spec.target.bandwidth)
+    return realized(network, table, spec)
 
 
 def _at(table: ResponseTable, frequency: float) -> complex:

@@ -37,6 +37,23 @@ class Excursion:
     input_peak: float
     input_allowed: float
 
+    @property
+    def swing_use(self) -> float:
+        """Share of the swing that is used; infinite where the supply leaves none."""
+        return self.peak / self.allowed if self.allowed > 0 else math.inf
+
+    @property
+    def slew_use(self) -> float:
+        """Share of the slew rate that is used."""
+        return self.slew / self.slew_allowed
+
+    @property
+    def input_use(self) -> float:
+        """Share of the input range that is used; infinite where the supply leaves none and there is a signal."""
+        if self.input_allowed > 0:
+            return self.input_peak / self.input_allowed
+        return math.inf if self.input_peak > 0 else 0.0
+
 
 def tones(interference: Interference, highest: float) -> tuple[FloatArray, FloatArray]:
     """Frequencies [Hz] and peak amplitudes of an interference, in its own unit, up to a frequency.

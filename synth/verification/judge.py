@@ -9,7 +9,7 @@ import numpy as np
 from synth import circuit
 from synth.circuit.sensor_figures import sensor_figures, stage_gain
 from synth.model.chain import Chain, Stage
-from synth.model.judgement import Realized, StageResult, Verification
+from synth.model.judgement import Realized, SensorModel, StageResult, Verification
 from synth.spec import Spec
 from synth.verification.builds.judge import judge_builds
 from synth.verification.cautions import cautions
@@ -44,8 +44,9 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verifica
     if builds > 0:
         requirements, drawn = judge_builds(chain, spec, requirements, builds, seed)
     requirements = (*requirements, *not_judged(spec, drawn is not None))
-    stages = _stage_results(chain, network, band, found, margins, spec.target.full_scale)
     model = sensor_figures(chain.sensor, chain.center_frequency)
+    pairs = match_pairs(chain, band, model)
+    stages = _stage_results(chain, network, pairs, found, margins, spec.target.full_scale)
     return Verification(
         table, noise, band, model, stages, requirements, cautions(spec, chain, drawn is not None), drawn
     )
@@ -54,7 +55,7 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verifica
 def _stage_results(
     chain: Chain,
     network: circuit.Network,
-    band: Realized,
+    pairs: dict[str, tuple[float, float]],
     found: tuple[Excursion, ...],
     margins: tuple[circuit.Margin, ...],
     full_scale: float,
@@ -63,7 +64,6 @@ def _stage_results(
     index = {node: k for k, node in enumerate(network.unknowns)}
     excursion = {e.ref: e for e in found}
     margin = {m.ref: m for m in margins}
-    pairs = match_pairs(chain, band)
     results = []
     for stage in chain.stages:
         if stage.kind == "reference":
@@ -99,22 +99,29 @@ def _reference_result(
     return StageResult(stage.name, 0.0, None, None, level, math.sqrt(2) * level, phase)
 
 
-def match_pairs(chain: Chain, band: Realized) -> dict[str, tuple[float, float]]:
-    """Which realized pole pair belongs to which bandpass section: the nearest in frequency and Q, each used once."""
+def match_pairs(chain: Chain, band: Realized, sensor: SensorModel) -> dict[str, tuple[float, float]]:
+    """Which realized pole pair belongs to which bandpass section: the nearest in frequency and Q, each used once.
+
+    A sensor that resonates has pairs of its own in the chain; they are set aside first.
+    """
     pairs = list(circuit.resonant_pairs(np.array(band.poles)))
+    for own in circuit.resonant_pairs(np.array(sensor.poles)):
+        if pairs:
+            pairs.remove(min(pairs, key=lambda pair: _distance(own, pair)))
     sections = [stage for stage in chain.stages if stage.kind == "bandpass"]
     found: dict[str, tuple[float, float]] = {}
     for stage in sorted(sections, key=lambda s: (-(s.target.q or 0.0), s.target.center_frequency or 0.0)):
-        best = min(pairs, key=lambda pair: _distance(stage, pair), default=None)
+        assert stage.target.center_frequency is not None
+        assert stage.target.q is not None
+        wanted = (stage.target.center_frequency, stage.target.q)
+        best = min(pairs, key=lambda pair: _distance(wanted, pair), default=None)
         if best is not None:
             pairs.remove(best)
             found[stage.name] = best
     return found
 
 
-def _distance(stage: Stage, pair: tuple[float, float]) -> float:
-    f0, q = stage.target.center_frequency, stage.target.q
-    assert f0 is not None
-    assert q is not None
+def _distance(wanted: tuple[float, float], pair: tuple[float, float]) -> float:
+    f0, q = wanted
     return abs(math.log(pair[0] / f0)) * q + abs(math.log(abs(pair[1]) / q))
 

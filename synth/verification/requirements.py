@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 
+import numpy as np
+
 from synth import circuit
 from synth.model.judgement import NoiseTable, Realized, Requirement, ResponseTable
 from synth.quantity import format_percent, format_si
@@ -74,16 +76,16 @@ def judged(
 
 def derived(found: tuple[Excursion, ...], margins: tuple[circuit.Margin, ...], band: Realized) -> Iterator[Requirement]:
     """What every chain must do whatever the spec says: swing, slew, input range, loop margins, poles."""
-    swing = min(found, key=lambda e: e.allowed / e.peak)
+    swing = max(found, key=lambda e: e.swing_use)
     yield limited("output swing", "V", swing.peak, at_most=swing.allowed, note=f"peak at {swing.ref}")
-    slew = min(found, key=lambda e: e.slew_allowed / e.slew)
+    slew = max(found, key=lambda e: e.slew_use)
     yield limited("slew rate", "V/s", slew.slew, at_most=slew.slew_allowed, note=f"at {slew.ref}")
     range_ = min(found, key=lambda e: e.input_allowed - e.input_peak)
     yield limited("input range", "V", range_.input_peak, at_most=range_.input_allowed, note=f"peak at {range_.ref}")
     worst = min(margins, key=lambda m: m.phase_margin)
     yield limited("phase margin", "deg", worst.phase_margin, at_least=PHASE_MARGIN, note=f"of {worst.ref}")
-    slowest = max(band.poles, key=lambda p: p.real)
-    yield limited("slowest decay", "1/s", -slowest.real, at_least=0.0, note="of the closed loops; negative grows")
+    fastest_growth = float(circuit.growth(np.array(band.poles), band.center_frequency).max())
+    yield limited("slowest decay", "1/s", 0.0 - fastest_growth, at_least=0.0, note="of all poles; negative grows")
 
 
 def not_judged(spec: Spec, drawn: bool = False) -> Iterator[Requirement]:
