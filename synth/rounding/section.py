@@ -26,6 +26,7 @@ from synth.topology.place import Draft, Stocks
 FREE_FREQUENCY, FREE_Q, FREE_GAIN = 5e-4, 5e-3, 0.06  # errors that cost nothing; the chain's gain is trimmed elsewhere
 SPREAD_SHARE = 0.1  # an error below this share of what tolerance spreads is free, too
 NEIGHBOURS = 3
+FIXED_RANKS = 4  # stocked values tried for a resistor that is not tuned, the next one where none before is good
 LARGEST_RATIO = 4.8  # of the two capacitors
 MOST_VARIANTS = 60
 STRAY = 0.14e-12  # [F] across the feedback: a resistor's body and the amplifier's pins
@@ -69,17 +70,23 @@ def round_section(
         InfeasibleError: no stocked values realize the pole pair with this amplifier.
     """
     trial = make_trial(topology, target, op_amp, stocks, center, ambient)
-    ideal, fitted = trial.fit(_capacitor_pairs(trial, op_amp))
-    in_stock = fitted & _within_stock(ideal, trial)
-    if not in_stock.any():
+    pairs = _capacitor_pairs(trial, op_amp)
+    has_fixed = len(topology.tuned) + len(topology.capacitors) + topology.amplifiers < len(topology.slots)
+    values: dict[str, FloatArray] = {}
+    for rank in range(FIXED_RANKS if has_fixed else 1):
+        found = _candidates(trial, pairs, rank)
+        values = {key: np.concatenate([values.get(key, v[:0]), v]) for key, v in found.items()}
+        if values[topology.tuned[0]].size == 0:
+            continue
+        frequency, q, gain = trial.evaluate(values, trial.start(values[topology.tuned[0]].shape))
+        order, equals, good = _ranked(values, (frequency, q, gain), trial, op_amp)
+        if good:
+            break
+    if values[topology.tuned[0]].size == 0:
         raise InfeasibleError(
             f"no stocked parts make {format_si(trial.frequency, 'Hz')} at Q {trial.q:.3g} with {op_amp.type} in a "
             f"{topology.title} section; allow a wider bandwidth, a faster amplifier or more capacitor values"
         )
-    values = _neighbourhood({key: v[in_stock] for key, v in ideal.items()}, trial)
-    frequency, q, gain = trial.evaluate(values, trial.start(values[topology.tuned[0]].shape))
-    errors = (frequency / trial.frequency - 1, q / trial.q - 1, gain / target.gain - 1)
-    order, equals = _ranked(values, errors, trial, op_amp)
     best = order[0]
     variants = tuple(
         Variant({key: float(v[k]) for key, v in values.items()}, float(gain[k]))
@@ -87,6 +94,13 @@ def round_section(
     )
     draft = Draft(topology, target, op_amp, variants[0].values)
     return Section(draft, float(frequency[best]), float(q[best]), float(gain[best]), variants)
+
+
+def _candidates(trial: Trial, pairs: Mapping[str, FloatArray], rank: int) -> dict[str, FloatArray]:
+    """Stocked values around the fitted ones of every capacitor pair, none where none fits; `rank` as in `Trial.fit`."""
+    ideal, fitted = trial.fit(pairs, rank)
+    in_stock = fitted & _within_stock(ideal, trial)
+    return _neighbourhood({key: v[in_stock] for key, v in ideal.items()}, trial)
 
 
 def _capacitor_pairs(trial: Trial, op_amp: OpAmp) -> dict[str, FloatArray]:
@@ -138,15 +152,20 @@ def _neighbourhood(ideal: Mapping[str, FloatArray], trial: Trial) -> dict[str, F
 
 def _ranked(
     values: Mapping[str, FloatArray],
-    errors: tuple[FloatArray, FloatArray, FloatArray],
+    realized: tuple[FloatArray, FloatArray, FloatArray],
     trial: Trial,
     op_amp: OpAmp,
-) -> tuple[NDArray[np.intp], int]:
-    """Trials best first, and how many share the best's error class.
+) -> tuple[NDArray[np.intp], int, bool]:
+    """Trials best first, how many share the best's error class, and whether its error costs nothing.
 
     The order is by error class, then how comfortable the impedance is, equal capacitors, plain error.  Scores are
     quantised before they are compared, ties are broken by the values themselves.
+
+    Args:
+        realized: frequency [Hz], Q, gain magnitude at the chain's centre.
     """
+    wanted = (trial.frequency, trial.q, trial.target.gain)
+    errors = [got / want - 1 for got, want in zip(realized, wanted, strict=True)]
     free_frequency, free_q = free_errors(trial.stocks)
     measure = np.maximum(np.abs(errors[0]) / free_frequency, np.abs(errors[1]) / free_q)
     measure = np.maximum(measure, np.abs(errors[2]) / FREE_GAIN)
@@ -160,7 +179,7 @@ def _ranked(
             f"no stocked values near {format_si(trial.frequency, 'Hz')} and Q {trial.q:.3g} hold a pole pair with "
             f"{op_amp.type}; stock more values"
         )
-    return order, int(np.count_nonzero(grade == grade[order[0]]))
+    return order, int(np.count_nonzero(grade == grade[order[0]])), bool(grade[order[0]] == 0)
 
 
 def free_errors(stocks: Stocks) -> tuple[float, float]:

@@ -68,18 +68,23 @@ class Trial:
             q = np.where(good, -np.abs(pole) / (2 * pole.real), np.nan)
         return frequency, q, np.where(good, gain, np.nan)
 
-    def fit(self, capacitors: Mapping[str, FloatArray]) -> tuple[dict[str, FloatArray], NDArray[np.bool_]]:
+    def fit(
+        self, capacitors: Mapping[str, FloatArray], rank: int = 0
+    ) -> tuple[dict[str, FloatArray], NDArray[np.bool_]]:
         """Resistors that realize the target with the real amplifier, and for which sets they were found.
 
         The resistors that are not tuned are taken from stock first; then the target given to the ideal equations is
         bent until the realized pole pair and gain are the wanted ones.
+
+        Args:
+            rank: 0 takes the nearest stocked value for each resistor that is not tuned, 1 the next nearest.
         """
         count = next(iter(capacitors.values())).shape
         wanted = (self.frequency, self.q, self.target.gain)
         peak = self.target.gain * math.hypot(1, self.q * (self.frequency / self.center - self.center / self.frequency))
         f, q, gain = (np.full(count, x) for x in (self.frequency, self.q, peak))
         fixed = self.topology.fixed(f, q, gain, capacitors)
-        given = {**capacitors, **{key: _nearest(value, self.stocks) for key, value in fixed.items()}}
+        given = {**capacitors, **{key: _nearest(value, self.stocks, rank) for key, value in fixed.items()}}
         error, values = np.full(count, np.inf), dict(given)
         for _ in range(PREDISTORTIONS):
             with np.errstate(all="ignore"):  # what the section cannot do is marked, not warned of
@@ -99,9 +104,10 @@ class Trial:
         return np.full(shape, pole)
 
 
-def _nearest(values: FloatArray, stocks: Stocks) -> FloatArray:
+def _nearest(values: FloatArray, stocks: Stocks, rank: int) -> FloatArray:
     grid: FloatArray = stocks.resistors.values
-    chosen: FloatArray = grid[np.argmin(np.abs(np.log(grid[None, :] / values[:, None])), axis=1)]
+    distance = np.abs(np.log(grid[None, :] / values[:, None]))
+    chosen: FloatArray = grid[np.argsort(distance, axis=1, kind="stable")[:, min(rank, grid.size - 1)]]
     return chosen
 
 
