@@ -13,6 +13,7 @@ References:
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -120,22 +121,52 @@ def noise(network: Network, frequencies: ArrayLike) -> NoiseSpectrum:
         raise CircuitError("noise is defined above 0 Hz only")
     m = matrices(network)
     _, y = solutions(m, f)
-    padded = np.concatenate([y, np.zeros((f.size, 1))], axis=1)  # row -1: ground and the held input
     powers: dict[str, FloatArray] = {}
-    for element in network.elements:
-        if element.noisy:
-            transfer = padded[:, m.index(element.nodes[1])] - padded[:, m.index(element.nodes[0])]
-            power = np.abs(transfer) ** 2 * (4 * BOLTZMANN * network.temperature * element.value)
-            label = element.owner or element.name
-            powers[label] = powers[label] + power if label in powers else power
-    for source in network.noise:
-        transfer = padded[:, m.index(source.nodes[1])] - padded[:, m.index(source.nodes[0])]
-        square = source.white**2 * (1 + source.corner / f) + (source.slope * f) ** 2
-        power = np.abs(transfer) ** 2 * square
-        label = source.label or source.name
+    for label, ends, square in _generators(network, f):
+        power = np.abs(_across(y, m, ends)) ** 2 * square
         powers[label] = powers[label] + power if label in powers else power
     table = np.array(list(powers.values())).reshape(len(powers), f.size)
     return NoiseSpectrum(f, np.sqrt(table.sum(axis=0)), tuple(powers), np.sqrt(table))
+
+
+def node_noise(network: Network, nodes: Sequence[str], frequencies: ArrayLike) -> FloatArray:
+    """Noise density of several nodes at once [V/rtHz], shape (nodes, F).
+
+    Raises:
+        CircuitError: a frequency is zero, or a node is not one of the circuit's unknowns.
+    """
+    f = frequency_array(frequencies)
+    if np.any(f <= 0):
+        raise CircuitError("noise is defined above 0 Hz only")
+    m = matrices(network)
+    missing = [node for node in nodes if m.index(node) < 0]
+    if missing:
+        raise CircuitError(f"no node {missing[0]!r} in the circuit; it has {', '.join(m.nodes)}")
+    Y, scale = scaled_systems(m, f)
+    power = np.zeros((len(nodes), f.size))
+    for k, node in enumerate(nodes):
+        readout = np.zeros(len(m.nodes))
+        readout[m.index(node)] = 1.0
+        y = solve(np.swapaxes(Y, 1, 2), readout) / scale
+        power[k] = sum(np.abs(_across(y, m, ends)) ** 2 * square for _, ends, square in _generators(network, f))
+    return np.sqrt(power)
+
+
+def _across(y: ComplexArray, m: Matrices, ends: tuple[str, ...]) -> ComplexArray:
+    """Effect of a current from the first to the second end, given the adjoint of each node, shape (F,)."""
+    padded = np.concatenate([y, np.zeros((y.shape[0], 1))], axis=1)  # row -1: ground and the held input
+    return np.asarray(padded[:, m.index(ends[1])] - padded[:, m.index(ends[0])], dtype=np.complex128)
+
+
+def _generators(network: Network, f: FloatArray) -> Iterator[tuple[str, tuple[str, ...], FloatArray]]:
+    """Every noise current: its label, its ends, and its density squared [A^2/Hz], shape (F,)."""
+    for element in network.elements:
+        if element.noisy:
+            thermal = np.full(f.shape, 4 * BOLTZMANN * network.temperature * element.value)
+            yield element.owner or element.name, element.nodes, thermal
+    for source in network.noise:
+        square = source.white**2 * (1 + source.corner / f) + (source.slope * f) ** 2
+        yield source.label or source.name, source.nodes, square
 
 
 def integrated(frequencies: FloatArray, density: FloatArray, low: float, high: float) -> float:

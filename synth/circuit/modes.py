@@ -41,7 +41,8 @@ def _vanishes(G: FloatArray, C: FloatArray, s: complex) -> bool:
         rows = np.abs(Y).max(axis=1)
         return float(np.linalg.slogdet(Y / rows[:, None])[1] + np.log(rows).sum())
 
-    return logarithm(s) < logarithm(s * (1 + 0.1j)) - 1.0
+    # on both sides, so that a conjugate pair is kept or dropped together
+    return logarithm(s) < max(logarithm(s * (1 + 0.1j)), logarithm(s * (1 - 0.1j))) - 1.0
 
 
 def _reference(reference_frequency: float) -> float:

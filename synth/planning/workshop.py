@@ -76,6 +76,8 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     assert best is not None
     places = [k for k, draft in enumerate(best[1]) if draft.topology.kind == "bandpass"]
     variants = {k: section.variants for k, section in zip(places, sections, strict=True)}
+    if emphasis.shelf is not None and len(gains) == 1:  # no plain gain stage to trim
+        variants = {k: emphasis.shelf.variants for k in range(len(best[1])) if k not in places} | variants
     notes: tuple[str, ...] = ()
     if shop.spec.supply.negative is None:
         mended = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
@@ -139,4 +141,4 @@ def _in_order(order: Sequence[str], gains: Sequence[Draft], sections: Sequence[D
 def _reserve(chain: Chain, spec: Spec) -> float:
     """Smallest ratio of what an amplifier can carry to what it must, over swing, slew and input range."""
     found = excursions(chain, circuit.build_network(chain), spec)
-    return 1 / max(max(e.swing_use, e.slew_use, e.input_use) for e in found)
+    return 1 / max(max(e.swing_use, e.slew_use, e.input_use, e.current_use) for e in found)

@@ -23,8 +23,9 @@ GROUND_LEG_RANGE = (22.0, 4.7e3)  # [ohm]
 WINDOW = 1.6  # how far the ground leg may move for a better ratio
 COUPLING_RATIO = 100.0  # the coupling corner lies this far below the centre
 DC_SHARE = 0.1  # [V] that bias current may shift the output by
-BIAS_RANGE = (470.0, 100e3)  # [ohm]
-SOURCE_RATIO = 20.0  # least ratio of bias resistor to source resistance
+BIAS_RANGE = (470.0, 1e6)  # [ohm]
+USUAL_BIAS, USUAL_RATIO = 100e3, 50.0  # [ohm], and of the source: larger bias resistors gain nothing
+SOURCE_RATIO = 10.0  # least ratio of bias resistor to source resistance
 STEPS = 2  # of the series either side of the wanted feedback resistor
 TRIMS = 4
 GOOD = 1e-4  # of the gain: no better pair is looked for
@@ -81,18 +82,28 @@ def damped(draft: Draft, inductance: float, stocks: Stocks) -> Draft:
 
 
 def bias_resistor(gain: float, op_amp: OpAmp, stocks: Stocks, source_resistance: float) -> float:
-    """Bias resistor [ohm]: as large as the bias current allows, and large against the source."""
-    largest = min(DC_SHARE / (op_amp.bias_current * gain), BIAS_RANGE[1])
+    """Bias resistor [ohm]: as large as the bias current allows, and large against the source.
+
+    Raises:
+        InfeasibleError: the two exclude each other.
+    """
+    by_current, stocked = DC_SHARE / (op_amp.bias_current * gain), float(stocks.resistors.values[-1])
+    largest = min(by_current, BIAS_RANGE[1], stocked)
     least = max(BIAS_RANGE[0], SOURCE_RATIO * source_resistance)
     if largest < least:
+        limit, remedy = f"the largest resistor in stock is {format_si(stocked, 'ohm')}", "lower sensor.resistance"
+        if by_current <= min(BIAS_RANGE[1], stocked):
+            drawn = format_si(op_amp.bias_current, "A")
+            limit = f"the bias current of {op_amp.type} ({drawn}) allows {format_si(largest, 'ohm')}"
+            remedy = "take a type of less bias current"
         raise InfeasibleError(
-            f"the bias current of {op_amp.type} ({format_si(op_amp.bias_current, 'A')}) allows "
-            f"{format_si(largest, 'ohm')} at a gain of {gain:.3g}, the source of "
-            f"{format_si(source_resistance, 'ohm')} needs {format_si(least, 'ohm')}; take a type of less bias current"
+            f"sensor.resistance: a source of {format_si(source_resistance, 'ohm')} needs a bias resistor of "
+            f"{format_si(least, 'ohm')} at a gain of {gain:.3g}; {limit}; {remedy}"
         )
     values = stocks.resistors.values
-    fitting = values[(values <= largest) & (values >= least)]
-    return float(fitting[-1]) if fitting.size else float(values[np.argmin(np.abs(np.log(values / largest)))])
+    usual = min(largest, max(USUAL_BIAS, USUAL_RATIO * source_resistance))
+    fitting = values[(values <= usual) & (values >= least)]
+    return float(fitting[-1]) if fitting.size else float(values[np.argmin(np.abs(np.log(values / usual)))])
 
 
 def _resistor_ratio(gain: float, op_amp: OpAmp, frequency: float) -> float:

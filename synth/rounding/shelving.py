@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,6 +22,7 @@ from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.quantity import format_si
 from synth.rounding.gain import bias_resistor, coupling_capacitor
+from synth.rounding.section import MOST_VARIANTS, Variant
 from synth.spec import Sensor
 from synth.topology import shelving
 from synth.topology.place import Draft, Stocks, Surroundings, place
@@ -128,6 +129,7 @@ class Shelf:
         gain: magnitude at the centre; high_gain: far above, with an ideal amplifier.
         left: of sensor and stage together, with the real amplifier.
         phase_margin: [degree] of its loop; measure: unevenness over what may be left.
+        variants: values as flat with the same capacitor and bound, the chosen ones first.
     """
 
     draft: Draft
@@ -139,6 +141,7 @@ class Shelf:
     left: Left
     phase_margin: float
     measure: float
+    variants: tuple[Variant, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -172,7 +175,7 @@ def round_shelf(aim: ShelfAim, op_amp: OpAmp, stocks: Stocks) -> Shelf:
     magnitude = bench.magnitude(values)
     left = aim.window.left(magnitude * aim.sensor[:, None])
     measure = aim.measure(left)
-    order = _ranked(values, pole, measure, magnitude[0] / aim.target.gain - 1, bench)
+    order, grade = _ranked(values, pole, measure, magnitude[0] / aim.target.gain - 1, bench)
     best: Shelf | None = None
     seen: set[float] = set()
     for k in order:
@@ -182,7 +185,9 @@ def round_shelf(aim: ShelfAim, op_amp: OpAmp, stocks: Stocks) -> Shelf:
         parts = {key: float(v[k]) for key, v in values.items()}
         shelf = _shelf(bench, parts, float(magnitude[0, k]), _one(left, int(k)), float(measure[k]))
         if best is None or (shelf.phase_margin > best.phase_margin and best.phase_margin < PHASE_MARGIN):
-            best = shelf
+            held = values[shelving.CAPACITOR[aim.kind]]
+            alike = order[(grade == grade[k])[order] & (pole == pole[k])[order] & (held == held[k])[order]]
+            best = replace(shelf, variants=_variants(shelf, values, magnitude[0], alike[:MOST_VARIANTS]))
         if best.phase_margin >= PHASE_MARGIN or measure[k] > max(1.0, 2 * measure[order[0]]):
             break
     assert best is not None
@@ -278,14 +283,17 @@ def _neighbourhood(
 
 def _ranked(
     values: Mapping[str, FloatArray], pole: FloatArray, measure: FloatArray, gain_error: FloatArray, bench: _Bench
-) -> NDArray[np.intp]:
-    """Trials best first: by error class, comfort of the impedance level, the tighter bound, plain error, values."""
+) -> tuple[NDArray[np.intp], FloatArray]:
+    """Trials best first, and the error class of each.
+
+    The order is by error class, comfort of the impedance level, the tighter bound, plain error, values.
+    """
     worst = np.maximum(measure / FREE_SHARE, np.abs(gain_error) / FREE_GAIN)
     worst = np.where(np.isfinite(worst), worst, UNKNOWN)
     grade = np.where(worst <= 1, 0, np.ceil(np.log2(np.maximum(worst, 1.0)) * 2))
     bound = np.round(np.abs(np.log(pole)), 6)
     keys = [*values.values(), np.round(worst, 3), bound, _discomfort(values, bench).astype(float), grade]
-    return np.lexsort(np.array(keys))
+    return np.lexsort(np.array(keys)), grade
 
 
 def _discomfort(values: Mapping[str, FloatArray], bench: _Bench) -> NDArray[np.intp]:
@@ -327,6 +335,16 @@ def _shelf(bench: _Bench, parts: Mapping[str, float], gain: float, left: Left, m
     high = float(shelving.low_gain(bench.aim.kind, arrays)) * pole / zero
     draft = Draft(shelving.SHELVES[bench.aim.kind], bench.aim.target, bench.op_amp, chosen)
     return Shelf(draft, bench.aim.kind, zero, pole, gain, high, left, margin.phase_margin, measure)
+
+
+def _variants(
+    shelf: Shelf, values: Mapping[str, FloatArray], gain: FloatArray, alike: NDArray[np.intp]
+) -> tuple[Variant, ...]:
+    """Other values as good; its coupling stays."""
+    return tuple(
+        Variant({**shelf.draft.values, **{key: float(v[k]) for key, v in values.items()}}, float(gain[k]))
+        for k in alike
+    )
 
 
 def _one(left: Left, k: int) -> Left:

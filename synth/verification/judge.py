@@ -14,7 +14,7 @@ from synth.spec import Spec
 from synth.verification.builds.judge import judge_builds
 from synth.verification.cautions import cautions
 from synth.verification.figures import noise_table, realized, response_table
-from synth.verification.headroom import Excursion, excursions
+from synth.verification.headroom import Excursion, excursions, output_noise
 from synth.verification.requirements import derived, judged, not_judged
 
 MARGIN_SPAN = (1e-3, 1e5)  # of the centre: where loop gains are searched for their unity crossings
@@ -34,7 +34,7 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verifica
     table = response_table(network, center, spec.target.bandwidth)
     band = realized(network, table, spec)
     noise = noise_table(network, table, band, spec)
-    found = excursions(chain, network, spec)
+    found = excursions(chain, network, spec, output_noise(chain, network))
     margins = tuple(
         circuit.phase_margin(network, a.ref, center * MARGIN_SPAN[0], center * MARGIN_SPAN[1])
         for a in network.amplifiers

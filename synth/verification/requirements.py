@@ -75,11 +75,14 @@ def judged(
 
 
 def derived(found: tuple[Excursion, ...], margins: tuple[circuit.Margin, ...], band: Realized) -> Iterator[Requirement]:
-    """What every chain must do whatever the spec says: swing, slew, input range, loop margins, poles."""
+    """What every chain must do whatever the spec says: swing, slew, current, input range, loop margins, poles."""
     swing = max(found, key=lambda e: e.swing_use)
     yield limited("output swing", "V", swing.peak, at_most=swing.allowed, note=f"peak at {swing.ref}")
     slew = max(found, key=lambda e: e.slew_use)
     yield limited("slew rate", "V/s", slew.slew, at_most=slew.slew_allowed, note=f"at {slew.ref}")
+    current = max(found, key=lambda e: e.current_use)
+    drive, note = current.current_allowed, f"peak at {current.ref}"
+    yield limited("output current", "A", current.current, at_most=drive, note=note)
     range_ = min(found, key=lambda e: e.input_allowed - e.input_peak)
     yield limited("input range", "V", range_.input_peak, at_most=range_.input_allowed, note=f"peak at {range_.ref}")
     worst = min(margins, key=lambda m: m.phase_margin)

@@ -25,7 +25,8 @@ def judge_builds(
 ) -> tuple[tuple[Requirement, ...], Builds]:
     """Requirements with their ranges over builds and the yield among them, and the yields one by one.
 
-    The level at the output is what calibration makes good: it counts only where the spec trims nothing.
+    The level at the output is what calibration makes good: it counts only where the spec trims nothing and asks an
+    accuracy.
 
     Raises:
         CircuitError: a build's circuit is singular.
@@ -40,7 +41,7 @@ def judge_builds(
             judged.append(requirement)
             continue
         good = meets(requirement, values)
-        counted = not (requirement.name == OUTPUT and trim == TRIMMED)
+        counted = requirement.name != OUTPUT or (trim == UNTRIMMED and spec.target.accuracy is not None)
         if counted:
             everything &= good
         span = tolerance_range(values) if np.isfinite(values).all() else None
