@@ -62,7 +62,8 @@ def build_values(chain: Chain, drawn: Drawn) -> FloatArray:
 
     Args:
         drawn: arrays of shape (builds,) by key: a part reference ("R3", in ohm or farad), or a reference and a
-            figure of it ("U1.gain_bandwidth", "R3.stray", "C1.loss_tangent"); what is not drawn is nominal.
+            figure of it ("U1.gain_bandwidth", "R3.stray", "C1.loss_tangent"), or "sensor." and an element of the
+            sensor, by which its value is multiplied; what is not drawn is nominal.
     """
     values = [np.asarray(p.value, dtype=float) for p in _walk(chain, drawn)]
     count = max((v.size for v in values), default=1)
@@ -71,7 +72,7 @@ def build_values(chain: Chain, drawn: Drawn) -> FloatArray:
 
 def _walk(chain: Chain, drawn: Drawn) -> Iterator[Placed]:
     for name, kind, nodes, value, noisy in sensor_elements(chain.sensor, INPUT):
-        yield Placed(name, kind, nodes, value, noisy, "sensor")
+        yield Placed(name, kind, nodes, value * drawn.get(f"sensor.{name}", 1.0), noisy, "sensor")
     omega = 2 * np.pi * chain.center_frequency
     for part in map(_at_signal_ground, chain.parts):
         if part.kind == "resistor":

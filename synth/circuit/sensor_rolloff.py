@@ -61,6 +61,18 @@ def rolloff_elements(rolloffs: tuple[Rolloff, ...], node: str) -> tuple[tuple[Ro
     return tuple(rows), node
 
 
+def corner_elements(rolloffs: tuple[Rolloff, ...]) -> tuple[tuple[Rolloff, tuple[str, ...]], ...]:
+    """For each rolloff the names of its capacitances: dividing them by a factor multiplies its corner by it."""
+    found, count = [], 0
+    for rolloff in rolloffs:
+        names = []
+        for block in _blocks(rolloff):
+            count += 1
+            names += [row[0] for row in block(f"sen{count}", "in", f"sen{count}") if row[1] == "capacitance"]
+        found.append((rolloff, tuple(names)))
+    return tuple(found)
+
+
 def _blocks(rolloff: Rolloff) -> list[Block]:
     shape = rolloff.shape if rolloff.kind == "loss" else rolloff.kind
     if shape == "table":

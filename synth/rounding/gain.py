@@ -196,8 +196,9 @@ def _levers(
 
 def _section_lever(drafts: Sequence[Draft], index: int, variants: Sequence[Variant]) -> _Lever:
     now = drafts[index].values
-    current = next((v.gain for v in variants if v.values == now), variants[0].gain)
-    return _Lever(index, tuple(v.values for v in variants), np.array([v.gain / current for v in variants]))
+    current = next((v.gain for v in variants if v.values.items() <= now.items()), variants[0].gain)
+    options = tuple({**now, **v.values} for v in variants)  # a damper stays
+    return _Lever(index, options, np.array([v.gain / current for v in variants]))
 
 
 def _gain_lever(drafts: Sequence[Draft], index: int, factor: float, stocks: Stocks) -> _Lever:

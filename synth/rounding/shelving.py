@@ -175,7 +175,7 @@ def round_shelf(aim: ShelfAim, op_amp: OpAmp, stocks: Stocks) -> Shelf:
     magnitude = bench.magnitude(values)
     left = aim.window.left(magnitude * aim.sensor[:, None])
     measure = aim.measure(left)
-    order, grade = _ranked(values, pole, measure, magnitude[0] / aim.target.gain - 1, bench)
+    order = _ranked(values, pole, measure, magnitude[0] / aim.target.gain - 1, bench)
     best: Shelf | None = None
     seen: set[float] = set()
     for k in order:
@@ -186,8 +186,9 @@ def round_shelf(aim: ShelfAim, op_amp: OpAmp, stocks: Stocks) -> Shelf:
         shelf = _shelf(bench, parts, float(magnitude[0, k]), _one(left, int(k)), float(measure[k]))
         if best is None or (shelf.phase_margin > best.phase_margin and best.phase_margin < PHASE_MARGIN):
             held = values[shelving.CAPACITOR[aim.kind]]
-            alike = order[(grade == grade[k])[order] & (pole == pole[k])[order] & (held == held[k])[order]]
-            best = replace(shelf, variants=_variants(shelf, values, magnitude[0], alike[:MOST_VARIANTS]))
+            alike = (measure <= max(FREE_SHARE, float(measure[k]))) & (pole == pole[k]) & (held == held[k])
+            alike[k] = True
+            best = replace(shelf, variants=_variants(shelf, values, magnitude[0], order[alike[order]][:MOST_VARIANTS]))
         if best.phase_margin >= PHASE_MARGIN or measure[k] > max(1.0, 2 * measure[order[0]]):
             break
     assert best is not None
@@ -283,17 +284,14 @@ def _neighbourhood(
 
 def _ranked(
     values: Mapping[str, FloatArray], pole: FloatArray, measure: FloatArray, gain_error: FloatArray, bench: _Bench
-) -> tuple[NDArray[np.intp], FloatArray]:
-    """Trials best first, and the error class of each.
-
-    The order is by error class, comfort of the impedance level, the tighter bound, plain error, values.
-    """
+) -> NDArray[np.intp]:
+    """Trials best first: by error class, comfort of the impedance level, the tighter bound, plain error, values."""
     worst = np.maximum(measure / FREE_SHARE, np.abs(gain_error) / FREE_GAIN)
     worst = np.where(np.isfinite(worst), worst, UNKNOWN)
     grade = np.where(worst <= 1, 0, np.ceil(np.log2(np.maximum(worst, 1.0)) * 2))
     bound = np.round(np.abs(np.log(pole)), 6)
     keys = [*values.values(), np.round(worst, 3), bound, _discomfort(values, bench).astype(float), grade]
-    return np.lexsort(np.array(keys)), grade
+    return np.lexsort(np.array(keys))
 
 
 def _discomfort(values: Mapping[str, FloatArray], bench: _Bench) -> NDArray[np.intp]:
@@ -340,11 +338,12 @@ def _shelf(bench: _Bench, parts: Mapping[str, float], gain: float, left: Left, m
 def _variants(
     shelf: Shelf, values: Mapping[str, FloatArray], gain: FloatArray, alike: NDArray[np.intp]
 ) -> tuple[Variant, ...]:
-    """Other values as good; its coupling stays."""
-    return tuple(
+    """Other values as flat, the chosen ones first; its coupling stays."""
+    found = [
         Variant({**shelf.draft.values, **{key: float(v[k]) for key, v in values.items()}}, float(gain[k]))
         for k in alike
-    )
+    ]
+    return tuple(sorted(found, key=lambda variant: variant.values != shelf.draft.values))
 
 
 def _one(left: Left, k: int) -> Left:

@@ -172,3 +172,30 @@ def test_a_chain_that_is_never_trimmed_counts_its_output() -> None:
     design = synth.design(synth.parse_spec(text), builds=600)
     assert design.verification.builds is not None
     assert all(y.counted for y in design.verification.builds.yields)
+
+
+@pytest.mark.parametrize(
+    "rolloff",
+    [
+        '{ kind = "high-pass", corner = "30 kHz", tolerance = "10 %", order = 2 }',
+        '{ kind = "low-pass", corner = "15 kHz", tolerance = "10 %" }',
+        '{ kind = "resonant", frequency = "22 kHz", q = "3", tolerance = "5 %" }',
+        '{ kind = "loss", at = "20 kHz", loss = "20 %", shape = "low-pass", tolerance = "10 %" }',
+    ],
+)
+def test_a_sensors_corner_is_drawn_as_if_it_were_another_sensor(rolloff: str) -> None:
+    text = SPEC.replace("[supply]", f"rolloff = [{rolloff}]\n[supply]")
+    design = synth.design(synth.parse_spec(text), builds=0)
+    chain, spec = design.chain, design.spec
+    drawn = draw(chain, spec, 5, 0, 4)
+    table = circuit.build_values(chain, {k: v for k, v in drawn.values.items() if k.startswith("sensor.")})
+    at = [15e3, 20e3, 26e3]
+    found = circuit.batch_response(circuit.build_network(chain), table, at)
+    item = drawn.causes["sensor rolloff 1"]
+    for build in range(4):
+        (own,) = spec.sensor.rolloff
+        spread = 1 + (own.tolerance or 0.0) * float(item[build])
+        key = {"resonant": "frequency", "loss": "loss"}.get(own.kind, "corner")
+        moved = replace(spec.sensor, rolloff=(replace(own, **{key: getattr(own, key) * spread}),))
+        expected = circuit.response(circuit.build_network(replace(chain, sensor=moved)), at)
+        assert found[:, build] == pytest.approx(expected, rel=1e-9)

@@ -13,9 +13,10 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from synth.circuit.network import FloatArray
+from synth.circuit.sensor_rolloff import corner_elements
 from synth.model.chain import Chain
 from synth.model.part import OpAmp, Part
-from synth.spec import Spec
+from synth.spec import Rolloff, Spec
 
 CHUNK = 2500  # builds drawn and judged at once: fixed, so that sums come out the same
 # half-widths that no catalog gives; uncertain, from memory: layout strays, dielectric loss, output resistance
@@ -106,3 +107,17 @@ def _sensor(draws: Draws, chain: Chain, warmth: FloatArray) -> None:
     if sensor.scale_temperature_coefficient:
         scale = scale * (1 + sensor.scale_temperature_coefficient * warmth)
     draws.scale = scale
+    for number, (rolloff, names) in enumerate(corner_elements(sensor.rolloff), start=1):
+        if rolloff.tolerance and rolloff.kind != "table":
+            factor = _corner_factor(rolloff, draws.uniform(f"sensor rolloff {number}"))
+            draws.values.update({f"sensor.{name}": 1 / factor for name in names})
+
+
+def _corner_factor(rolloff: Rolloff, drawn: FloatArray) -> FloatArray:
+    """Corner over its nominal value; the tolerance of a loss is that of the loss itself."""
+    spread = 1 + (rolloff.tolerance or 0.0) * drawn
+    if rolloff.kind != "loss":
+        return spread
+    assert rolloff.loss is not None
+    nominal, moved = (np.sqrt(1 / (1 - np.asarray(x)) ** 2 - 1) for x in (rolloff.loss, rolloff.loss * spread))
+    return np.asarray(moved / nominal if rolloff.shape == "high-pass" else nominal / moved)
