@@ -1,7 +1,7 @@
 """Kills `synth design` while it replaces a design folder by that of another spec, and looks at what is there.
 
-Half of the kills are spread evenly over the whole run; the other half fall within a few milliseconds of the moment
-at which the new folder begins to appear beside the old one, where the swap is.
+Half of the kills are spread evenly over the whole run; the other half fall between the moment at which the new folder
+begins to appear beside the old one and twice the time that it took, in a run left alone, to take its place.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from tests.spice.comparison import DEMO
 
 COMMAND = "from synth.cli import main; main()"
 TEMPORARY = ".synth-"
-NEAR = 0.015  # [s] from the first file of the new folder to past the swap
+BUILDS = 200  # few, to come to the writing soon
 PATIENCE = 60.0  # [s]
 
 Hashes = dict[str, str]
@@ -61,7 +61,7 @@ def two_specs(root: Path) -> list[Path]:
 
 def start(spec: Path, folder: Path) -> subprocess.Popen[bytes]:
     """`synth design SPEC --out FOLDER` in a process of its own."""
-    command = [sys.executable, "-c", COMMAND, "design", str(spec), "--out", str(folder)]
+    command = [sys.executable, "-c", COMMAND, "design", str(spec), "--out", str(folder), "--builds", str(BUILDS)]
     return subprocess.Popen(command, stdout=subprocess.DEVNULL, stderr=subprocess.PIPE)
 
 
@@ -73,6 +73,7 @@ def kill_designs(root: Path, kills: int, seed: int = 20) -> Outcome:
     for spec in specs:
         began = time.perf_counter()
         process = start(spec, folder)
+        near = _seconds_to_swap(folder, process)
         error = process.communicate(timeout=PATIENCE)[1]
         seconds.append(time.perf_counter() - began)
         assert process.returncode in (0, 1), error
@@ -87,7 +88,7 @@ def kill_designs(root: Path, kills: int, seed: int = 20) -> Outcome:
             _wait_until(began + generator.uniform(0, 1.1 * max(seconds)))
         else:
             _wait_for_temporary(root, process)
-            _wait_until(time.perf_counter() + generator.uniform(0, NEAR))
+            _wait_until(time.perf_counter() + generator.uniform(0, 2 * near))
         process.send_signal(signal.SIGKILL)
         process.communicate(timeout=PATIENCE)
         too_late += process.returncode != -signal.SIGKILL
@@ -101,6 +102,16 @@ def kill_designs(root: Path, kills: int, seed: int = 20) -> Outcome:
             torn.append(f"kill {k}: {len(found)} files, neither old nor new: {strange}")
     _check_that_the_next_run_tidies_up(specs[1 - now], folder, wanted[1 - now])
     return Outcome(kills, counts["old"], counts["new"], tuple(torn), too_late)
+
+
+def _seconds_to_swap(folder: Path, process: subprocess.Popen[bytes]) -> float:
+    """From the first sign of the new folder until it stands in its place."""
+    before = folder.stat().st_ino if folder.exists() else None
+    _wait_for_temporary(folder.parent, process)
+    began = time.perf_counter()
+    while process.poll() is None and (not folder.exists() or folder.stat().st_ino == before):
+        time.sleep(1e-4)
+    return time.perf_counter() - began
 
 
 def _check_that_the_next_run_tidies_up(spec: Path, folder: Path, wanted: Hashes) -> None:
