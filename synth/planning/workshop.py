@@ -11,17 +11,19 @@ from synth.circuit.dc_path import dc_path_problem
 from synth.errors import InfeasibleError
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
-from synth.planning.amplifiers import choose_section_circuit
+from synth.planning.amplifiers import SectionCircuit, choose_section_circuits
 from synth.planning.emphasis import Emphasis, emphasis_notes, make_emphasis
 from synth.planning.front import Front
 from synth.planning.partition import Partition, orders
 from synth.planning.reference import choose_references, reference_caution
 from synth.planning.source import insertion_note, stage_source
 from synth.rounding import Section, damped, gain_draft, round_section, trim_chain
-from synth.spec import Spec
+from synth.spec import Sensor, Spec
 from synth.topology.place import Draft, Stocks, Surroundings, place
-from synth.verification.headroom import excursions
+from synth.verification import MARGIN_SPAN, PHASE_MARGIN
+from synth.verification.headroom import excursions, output_noise
 
+MOST_CIRCUITS = 6  # tried for a section before the one of the best phase margin is taken
 TRIM_ROOM = 1.05  # what the gain's trim may still move
 
 
@@ -35,6 +37,7 @@ class Workshop:
     attenuation: float
     front: Front | None
     rounded: dict[tuple[str, str, StageTarget], Section] = field(default_factory=dict)
+    margins: dict[tuple[str, str, StageTarget], float] = field(default_factory=dict)
     emphases: dict[Partition, Emphasis] = field(default_factory=dict)
 
 
@@ -77,7 +80,7 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     places = [k for k, draft in enumerate(best[1]) if draft.topology.kind == "bandpass"]
     variants = {k: section.variants for k, section in zip(places, sections, strict=True)}
     if emphasis.shelf is not None and len(gains) == 1:  # no plain gain stage to trim
-        variants = {k: emphasis.shelf.variants for k in range(len(best[1])) if k not in places} | variants
+        variants[[draft.topology.kind for draft in best[1]].index("pre-emphasis")] = emphasis.shelf.variants
     notes: tuple[str, ...] = ()
     if shop.spec.supply.negative is None:
         mended = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
@@ -97,18 +100,48 @@ def _emphasis(shop: Workshop, split: Partition) -> Emphasis:
 
 
 def _sections(shop: Workshop, pairs: Sequence[PolePair], section_gain: float) -> tuple[Section, ...]:
-    chosen = choose_section_circuit(shop.spec, shop.op_amps, max(pair.q for pair in pairs))
-    sections = []
-    for pair in pairs:
-        target = StageTarget(section_gain ** (1 / len(pairs)), 1.0, pair.frequency, pair.q)
-        key = (chosen.topology.name, chosen.op_amp.type, target)
-        if key not in shop.rounded:
-            center, ambient = shop.spec.target.center_frequency, shop.spec.environment.ambient
-            shop.rounded[key] = round_section(
-                target, chosen.op_amp, shop.stocks, center, ambient, chosen.topology
-            )
-        sections.append(shop.rounded[key])
-    return tuple(sections)
+    """The sections rounded, in the first circuit and amplifier whose loops keep their phase margin."""
+    target = [StageTarget(section_gain ** (1 / len(pairs)), 1.0, pair.frequency, pair.q) for pair in pairs]
+    hardest = max(range(len(pairs)), key=lambda k: pairs[k].q)
+    best: tuple[float, SectionCircuit] | None = None
+    failure: InfeasibleError | None = None
+    for chosen in choose_section_circuits(shop.spec, shop.op_amps, pairs[hardest].q)[:MOST_CIRCUITS]:
+        try:
+            margin = _margin(shop, _rounded(shop, chosen, target[hardest]))
+        except InfeasibleError as error:
+            failure = failure or error
+            continue
+        if best is None or margin > best[0] + 1e-9:
+            best = (margin, chosen)
+        if margin >= PHASE_MARGIN:
+            break
+    if best is None:
+        assert failure is not None
+        raise failure
+    return tuple(_rounded(shop, best[1], each) for each in target)
+
+
+def _rounded(shop: Workshop, chosen: SectionCircuit, target: StageTarget) -> Section:
+    key = (chosen.topology.name, chosen.op_amp.type, target)
+    if key not in shop.rounded:
+        center, ambient = shop.spec.target.center_frequency, shop.spec.environment.ambient
+        shop.rounded[key] = round_section(target, chosen.op_amp, shop.stocks, center, ambient, chosen.topology)
+    return shop.rounded[key]
+
+
+def _margin(shop: Workshop, section: Section) -> float:
+    """Worst phase margin [degree] of a section's amplifiers, between an ideal source and nothing."""
+    draft = section.draft
+    assert draft.op_amp is not None
+    key = (draft.topology.name, draft.op_amp.type, draft.target)
+    if key not in shop.margins:
+        center = shop.spec.target.center_frequency
+        source = Surroundings(center, shop.spec.environment.ambient, Sensor(1.0, "V"), None, 0.0)
+        network = circuit.build_network(place([draft], shop.stocks, source))
+        low, high = (center * span for span in MARGIN_SPAN)
+        found = (circuit.phase_margin(network, a.ref, low, high) for a in network.amplifiers)
+        shop.margins[key] = min(margin.phase_margin for margin in found)
+    return shop.margins[key]
 
 
 def _gains(shop: Workshop, emphasis: Emphasis) -> tuple[Draft, ...]:
@@ -140,5 +173,6 @@ def _in_order(order: Sequence[str], gains: Sequence[Draft], sections: Sequence[D
 
 def _reserve(chain: Chain, spec: Spec) -> float:
     """Smallest ratio of what an amplifier can carry to what it must, over swing, slew and input range."""
-    found = excursions(chain, circuit.build_network(chain), spec)
+    network = circuit.build_network(chain)
+    found = excursions(chain, network, spec, output_noise(chain, network))
     return 1 / max(max(e.swing_use, e.slew_use, e.input_use, e.current_use) for e in found)
