@@ -81,7 +81,13 @@ class Entry:
     @property
     def margin(self) -> float:
         """Share of the target that is left (at most), or that was gained beyond it (at least); negative: missed."""
-        return 1 - self.measured / self.target if self.bound == AT_MOST else self.measured / self.target - 1
+        share = self.recorded / self.target
+        return 1 - share if self.bound == AT_MOST else share - 1
+
+    @property
+    def recorded(self) -> float:
+        """What was measured, with three digits."""
+        return float(f"{self.measured:.3g}")
 
     @property
     def inside(self) -> bool:
@@ -95,9 +101,9 @@ class Entry:
             "run": self.run,
             "bound": self.bound,
             "target": self.target,
-            "measured": float(f"{self.measured:.3g}"),
+            "measured": self.recorded,
             "unit": self.unit,
-            "margin": math.floor(self.margin * 1e3) / 1e3,
+            "margin": float(f"{self.margin:.3f}"),
             "command": f"python -m tests.evidence {self.run}",
             "date": self.date,
             "note": self.note,

@@ -43,10 +43,12 @@ class Designs:
     """Design folders made on demand below a folder, each once.
 
     Attributes:
-        root: where they go; refused: message by name of what could not be designed.
+        root: where they go; builds: how many are drawn, few in tests that look at nominal figures;
+        refused: message by name of what could not be designed.
     """
 
     root: Path
+    builds: int = api.BUILDS
     refused: dict[str, str] = field(default_factory=dict)
 
     def folder(self, spec: Path, ambient: float | None = None) -> Path | None:
@@ -63,7 +65,7 @@ class Designs:
             asked = api.load_spec(spec)
             if ambient is not None:
                 asked = api.parse_spec(_at_ambient(spec, ambient), f"{name}.toml", spec.parent)
-            api.save_design(api.design(asked), target)
+            api.save_design(api.design(asked, self.builds), target)
         except SynthError as error:
             self.refused[name] = str(error)
             return None
