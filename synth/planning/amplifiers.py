@@ -24,6 +24,8 @@ SLEW_RESERVE = 0.5  # of the slew rate, for the signal
 SMALLEST_STAGE_GAIN = 1.5
 USUAL_CAPACITANCE = 4.7e-10  # [F] the impedance level that a section's noise is guessed at
 SCORE_GRADES = (0.4, 1.0)  # effects of amplifier spreads, in units of what is tolerated
+USUAL_TOLERANCE = 0.01  # of resistors, where the spec names none
+SECTION_MARGIN = 47.0  # [degree] that a section's amplifier should keep
 UNITY_MARGIN = 50.0  # [degree] of phase at unity gain, that a section's amplifier should have
 LARGEST_SHIFT, LARGEST_LOSS = 0.12, 0.3  # of a section's frequency and Q by its amplifier: beyond it, no design
 
@@ -88,7 +90,8 @@ def section_circuits(
     """Circuits and amplifiers for a section of some Q, best first: by how much amplifier spreads move its pole pair.
 
     Finite gain-bandwidth and DC gain move frequency and Q; the spread of each counts, in units of what centre and
-    bandwidth tolerate, graded by `SCORE_GRADES`.  Within a grade fewer amplifiers win, then fewer parts, then the
+    bandwidth tolerate, graded by `SCORE_GRADES`; an amplifier whose loop would be short of phase comes last.  Within
+    a grade fewer amplifiers win, then fewer parts, then the
     smaller effect in steps of 1.5, once below a tenth of the tolerance the quieter, then the lower current.
     """
     ranked = []
@@ -99,16 +102,17 @@ def section_circuits(
             score = _spread_score(spec, op_amp, q, topology)
             if score is not None:
                 noise = section_noise(op_amp, spec.target.center_frequency, q, topology)
+                shaky = section_margin(op_amp, topology) < SECTION_MARGIN
                 grade = sum(score > limit for limit in SCORE_GRADES)
                 effort = (topology.amplifiers, len(topology.slots))
-                key = (grade, *effort, _steps(max(score, 0.1) / 0.1), _steps(noise / 1e-9))
+                key = (shaky, grade, *effort, _steps(max(score, 0.1) / 0.1), _steps(noise / 1e-9))
                 ranked.append(((*key, op_amp.supply_current, op_amp.type, topology.name), topology, op_amp))
     return tuple(SectionCircuit(row[1], row[2]) for row in sorted(ranked, key=lambda row: row[0]))
 
 
 def _spread_score(spec: Spec, op_amp: OpAmp, q: float, topology: SectionTopology) -> float | None:
     """Worst effect of the amplifier's spreads over what is tolerated; None where the amplifier cannot do it."""
-    if not suits_sections(op_amp):
+    if op_amp.minimum_noise_gain > 1:
         return None
     center = spec.target.center_frequency
     shift, stretch = (abs(x) for x in topology.shift(q, center / op_amp.gain_bandwidth))
@@ -116,7 +120,9 @@ def _spread_score(spec: Spec, op_amp: OpAmp, q: float, topology: SectionTopology
     if max(shift, stretch) > LARGEST_SHIFT or loss > LARGEST_LOSS:
         return None
     moved = shift * op_amp.gain_bandwidth_spread * center / (spec.target.center_tolerance * spec.target.bandwidth)
+    tolerance = spec.parts.resistors.tolerance or USUAL_TOLERANCE
     widened = loss * op_amp.dc_gain_spread + stretch * op_amp.gain_bandwidth_spread
+    widened += 2 * topology.q_spread(q) * tolerance
     return max(moved, widened / spec.target.bandwidth_tolerance)
 
 
@@ -140,8 +146,16 @@ def suits_sections(op_amp: OpAmp) -> bool:
     return op_amp.minimum_noise_gain <= 1 and margin >= UNITY_MARGIN
 
 
-def choose_section_circuit(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> SectionCircuit:
-    """The first of `section_circuits`, over the circuit that the spec insists on or all.
+def section_margin(op_amp: OpAmp, topology: SectionTopology) -> float:
+    """Phase margin [degree] that an amplifier would have in a section, by the circuit's fitted loss."""
+    own = phase_margin(op_amp.gain_bandwidth, op_amp.dc_gain, op_amp.second_pole, 1.0)
+    capacitance = op_amp.input_capacitance_differential + op_amp.input_capacitance_common
+    fixed, each = topology.margin_loss
+    return own - fixed - each * op_amp.gain_bandwidth * 1e-6 * capacitance * 1e12
+
+
+def choose_section_circuits(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> tuple[SectionCircuit, ...]:
+    """`section_circuits` over the circuit that the spec insists on or all.
 
     Raises:
         InfeasibleError: none is fast enough; names the bandwidth that would do.
@@ -149,7 +163,7 @@ def choose_section_circuit(spec: Spec, op_amps: tuple[OpAmp, ...], q: float) -> 
     topologies = allowed_topologies(spec)
     found = section_circuits(spec, op_amps, q, topologies)
     if found:
-        return found[0]
+        return found
     stable = [a for a in op_amps if suits_sections(a)]
     if not stable:
         raise InfeasibleError(

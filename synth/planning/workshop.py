@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
@@ -24,6 +25,8 @@ from synth.verification import MARGIN_SPAN, PHASE_MARGIN
 from synth.verification.headroom import excursions, output_noise
 
 MOST_CIRCUITS = 6  # tried for a section before the one of the best phase margin is taken
+ISOLATED_CAPACITANCE = 10e-12  # [F] of a load: from here on a resistor stands before it
+ISOLATION, LIGHT_LOAD = 100.0, 5e3  # [ohm], half of it before a heavier load; common practice, no source
 TRIM_ROOM = 1.05  # what the gain's trim may still move
 
 
@@ -49,11 +52,21 @@ class BuiltChain:
     notes: tuple[str, ...] = ()
 
 
-def surroundings(spec: Spec) -> Surroundings:
-    """What a chain for the spec stands between."""
-    target = spec.target
+def surroundings(spec: Spec, stocks: Stocks) -> Surroundings:
+    """What a chain for the spec stands between; a load with capacitance is isolated from the last amplifier."""
+    target, capacitance = spec.target, spec.target.load_capacitance or 0.0
+    isolation = None
+    if capacitance >= ISOLATED_CAPACITANCE:
+        light = target.load is None or target.load >= LIGHT_LOAD
+        wanted, values = ISOLATION if light else ISOLATION / 2, stocks.resistors.values
+        isolation = float(min(values, key=lambda v: (abs(math.log(v / wanted)), v)))
     return Surroundings(
-        target.center_frequency, spec.environment.ambient, spec.sensor, target.load, target.load_capacitance or 0.0
+        target.center_frequency,
+        spec.environment.ambient,
+        spec.sensor,
+        target.load,
+        capacitance,
+        isolation=isolation,
     )
 
 
@@ -67,7 +80,7 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
     sections = _sections(shop, pairs, emphasis.split.section_gain)
     gains = _gains(shop, emphasis)
     front = () if shop.front is None else (shop.front.draft,)
-    around = surroundings(shop.spec)
+    around = surroundings(shop.spec, shop.stocks)
     best: tuple[float, tuple[Draft, ...]] | None = None
     for order in orders(len(gains), len(sections)):
         drafts = (*front, *_in_order(order, gains, [section.draft for section in sections]))

@@ -58,6 +58,10 @@ class SectionTopology(Topology):
         shift: (q, f0/GBW) -> first-order relative shifts of frequency and Q by finite gain-bandwidth.
         loss: (q, A0) -> first-order relative shift of Q by finite DC gain.
         noise_gain: (q,) -> ratio of the output noise at the centre to an amplifier's own voltage noise.
+        q_spread: (q,) -> standard deviation of Q over the tolerance of the resistors, linear, rectangular.
+        margin_loss: phase that the circuit takes from an amplifier's unity-gain margin: [degree], and [degree] for
+            each MHz pF of gain-bandwidth and input capacitance; fitted to the engine's figures at Q 10, the judge
+            decides.
         largest_q: beyond it the circuit is not used; `limit` says why.
     """
 
@@ -68,6 +72,8 @@ class SectionTopology(Topology):
     shift: Callable[[float, float], tuple[float, float]]
     loss: Callable[[float, float], float]
     noise_gain: Callable[[float], float]
+    q_spread: Callable[[float], float]
+    margin_loss: tuple[float, float]
     largest_q: float
     limit: str
 

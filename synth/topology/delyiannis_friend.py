@@ -23,6 +23,8 @@ References:
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from synth.topology.base import FloatArray, SectionTopology, Slot, Values
@@ -111,6 +113,15 @@ def noise_gain(q: float) -> float:
     return q * (1 + 2 * q0**2) * (1 + float(feedback_ratio(q, 1.0, 1.0))) / q0
 
 
+def q_spread(q: float) -> float:
+    """Standard deviation of Q over the resistors' tolerance: Q is a difference of two dampings.
+
+    Q moves by 2 Q/Q0 - 1 times the change of sqrt(R2/R1), two resistors, and by Q/Q0 - 1 times that of RA/RB.
+    """
+    ratio = q / min(q / 1.5, 5.0)
+    return math.hypot(0.41 * (2 * ratio - 1), 0.82 * (ratio - 1))
+
+
 TOPOLOGY = SectionTopology(
     name="delyiannis-friend",
     title="multiple-feedback bandpass with Q enhancement",
@@ -134,6 +145,8 @@ TOPOLOGY = SectionTopology(
     shift=frequency_shift,
     loss=q_loss,
     noise_gain=noise_gain,
+    q_spread=q_spread,
+    margin_loss=(0.0, 0.022),
     largest_q=20.0,
     limit="its Q is the difference of two dampings: at Q/Q0 = 4 it moves seven times as far as sqrt(R2/R1)",
 )

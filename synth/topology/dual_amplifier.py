@@ -119,6 +119,8 @@ TOPOLOGY = SectionTopology(
     shift=frequency_shift,
     loss=q_loss,
     noise_gain=noise_gain,
+    q_spread=lambda _q: 0.8,
+    margin_loss=(15.0, 0.04),
     largest_q=50.0,
     limit="the loss of its capacitors takes 2 Q tan d of Q, a tenth at 1e-3",
 )

@@ -88,6 +88,8 @@ TOPOLOGY = SectionTopology(
     shift=frequency_shift,
     loss=q_loss,
     noise_gain=lambda q: 2 * q**2,
+    q_spread=lambda _q: 0.41,
+    margin_loss=(3.0, 0.0),
     largest_q=25.0,
     limit="its resistor spread is 4 Q^2 and finite DC gain costs 2 Q^2/A0 of Q",
 )

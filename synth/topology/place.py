@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from synth.circuit import OUTPUT, TERMINAL
 from synth.model.chain import Chain, Stage, StageTarget
@@ -51,6 +51,7 @@ class Surroundings:
         center_frequency: [Hz]; ambient: [degC].
         sensor: as asked.
         load_resistance: [ohm] or None; load_capacitance: [F].
+        isolation: [ohm] between the last amplifier and a load with capacitance, None for none.
         references: mid-rails of a single supply, the stages shared out among them in order; () on a dual supply.
     """
 
@@ -60,6 +61,7 @@ class Surroundings:
     load_resistance: float | None
     load_capacitance: float
     references: tuple[Reference, ...] = ()
+    isolation: float | None = None
 
 
 def place(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> Chain:
@@ -73,10 +75,13 @@ def place(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> Chai
     node = TERMINAL
     for k, draft in enumerate(drafts):
         assert draft.op_amp is not None
-        following = OUTPUT if k == len(drafts) - 1 else f"n{k + 1}"
+        last = k == len(drafts) - 1
+        following = OUTPUT if last and around.isolation is None else f"n{k + 1}"
         ground = _reference_node(k // share) if around.references else GROUND
         builder.add(draft, draft.op_amp.type, node, following, ground)
         node = following
+    if around.isolation is not None:
+        builder.isolate(node, around.isolation)
     op_amps = [d.op_amp for d in drafts] + [r.op_amp for r in around.references]
     models = {op_amp.type: op_amp for op_amp in op_amps if op_amp is not None}
     return Chain(
@@ -104,6 +109,9 @@ def _amplifiers(drafts: Sequence[Draft], references: Sequence[Reference]) -> Ite
     return iter(amplifier_references(each))
 
 
+ISOLATION = Slot("RI", "resistor", "isolates the load's capacitance", ("out", "load"))
+
+
 @dataclass(slots=True)
 class _Builder:
     """Counts designators and collects parts and stages."""
@@ -118,6 +126,14 @@ class _Builder:
     def count(self, what: str) -> int:
         self.counts[what] = self.counts.get(what, 0) + 1
         return self.counts[what]
+
+    def isolate(self, node: str, resistance: float) -> None:
+        """A resistor from the last stage's amplifier to the output, one of that stage's parts."""
+        stage = self.stages[-1]
+        ref = f"R{self.count('resistor')}"
+        center = self.around.center_frequency
+        self.parts.append(_passive(ref, stage.name, ISOLATION, (node, OUTPUT), resistance, self.stocks, center))
+        self.stages[-1] = replace(stage, parts=(*stage.parts, ref))
 
     def add(self, draft: Draft, op_amp: str, before: str, after: str, ground: str) -> None:
         kind = draft.topology.kind

@@ -16,7 +16,7 @@ from synth.planning.amplifiers import (
     LARGEST_SHIFT,
     NOISE_SLACK,
     allowed_topologies,
-    choose_section_circuit,
+    choose_section_circuits,
     gain_candidates,
     input_noise,
     largest_q,
@@ -209,32 +209,32 @@ def test_a_decompensated_type_suits_no_section() -> None:
 
 def test_the_faster_of_two_wins_where_it_matters(spec: Spec) -> None:
     fast, slow = op_amp(type="FAST", gain_bandwidth=300e6), op_amp(type="SLOW", gain_bandwidth=20e6, **FRUGAL)
-    assert choose_section_circuit(spec, (slow, fast), 20.0).op_amp is fast
+    assert choose_section_circuits(spec, (slow, fast), 20.0)[0].op_amp is fast
 
 
 def test_the_frugal_of_two_wins_where_speed_does_not_matter() -> None:
     low = spec_of(changed(('"60 kHz"', '"1 kHz"'), ('"3 kHz"', '"500 Hz"')))
     fast, slow = op_amp(type="FAST", gain_bandwidth=300e6), op_amp(type="SLOW", gain_bandwidth=20e6, **FRUGAL)
-    assert choose_section_circuit(low, (fast, slow), 2.0).op_amp is slow
+    assert choose_section_circuits(low, (fast, slow), 2.0)[0].op_amp is slow
 
 
 def test_no_section_without_an_amplifier_stable_at_unity_gain(spec: Spec) -> None:
     with pytest.raises(InfeasibleError, match=r"parts\.op_amps: a bandpass section needs .* stable at unity gain"):
-        choose_section_circuit(spec, (op_amp(minimum_noise_gain=5.0),), 10.0)
+        choose_section_circuits(spec, (op_amp(minimum_noise_gain=5.0),), 10.0)
 
 
 def test_a_q_too_much_for_the_amplifiers_names_a_bandwidth_that_is_not(spec: Spec) -> None:
     slow = (op_amp(gain_bandwidth=3e6),)
     one = replace(spec, filter=replace(spec.filter, topology="multiple-feedback"))
     with pytest.raises(InfeasibleError, match=r"section of Q 20 at 60 kHz.*widen target\.bandwidth to") as caught:
-        choose_section_circuit(one, slow, 20.0)
+        choose_section_circuits(one, slow, 20.0)
     reachable = float(str(caught.value).split("; Q ")[1].split()[0])
-    assert choose_section_circuit(one, slow, 0.99 * reachable).op_amp is slow[0]
+    assert choose_section_circuits(one, slow, 0.99 * reachable)[0].op_amp is slow[0]
 
 
 def test_a_centre_too_high_for_a_section_of_any_q(spec: Spec) -> None:
     with pytest.raises(InfeasibleError, match=r"target\.center_frequency of 60 kHz is too high.*lower it"):
-        choose_section_circuit(spec, (op_amp(gain_bandwidth=200e3),), 20.0)
+        choose_section_circuits(spec, (op_amp(gain_bandwidth=200e3),), 20.0)
 
 
 @pytest.mark.parametrize("name", SECTIONS)
