@@ -6,6 +6,7 @@ Exit status: 0 every judged requirement met; 1 designed, some requirement not me
 from __future__ import annotations
 
 import logging
+import os
 import sys
 from collections.abc import Callable
 from pathlib import Path
@@ -203,5 +204,9 @@ def run(command: Callable[[], object]) -> int:
 
 
 def main() -> None:
-    """Entry point of the console script."""
+    """Entry point of the console script.
+
+    One thread for linear algebra: the matrices are small, and two threads spend their time waiting for each other.
+    """
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     sys.exit(run(app))

@@ -105,14 +105,21 @@ def _interpolated(
         response (F, builds) and failures (builds,).
     """
     numerator, determinant = run(program, values, s)
-    bottom = weights @ determinant[:NODES]
-    h = (weights @ numerator[:NODES]) / bottom
+    bottom = _weighed(weights, determinant[:NODES])
+    h = _weighed(weights, numerator[:NODES])
+    h /= bottom
     size = np.abs(h)
     at_peak = np.abs(bottom[size.argmax(axis=0), np.arange(size.shape[1])])
     rounding = ROUNDING * np.abs(determinant[:NODES]).max(axis=0)
     accurate = rounding <= TOLERANCE * at_peak
     exact = numerator[NODES:] / determinant[NODES:]
     return h, ~accurate | _disagrees(h[held], exact, size.max(axis=0))
+
+
+def _weighed(weights: FloatArray, values: ComplexArray) -> ComplexArray:
+    """Real weights times complex values, as one real product: half the work of a complex one."""
+    parts = np.ascontiguousarray(values).view(np.float64)
+    return (weights @ parts).view(np.complex128)
 
 
 def _disagrees(h: ComplexArray, exact: ComplexArray, peak: FloatArray) -> NDArray[np.bool_]:
