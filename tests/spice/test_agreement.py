@@ -59,7 +59,7 @@ def test_simulator_agrees(designs: Designs, spec: Path, simulator: Simulator) ->
 
 
 @simulators
-@pytest.mark.parametrize("spec", all_specs()[::4], ids=name_of)
+@pytest.mark.parametrize("spec", all_specs()[::7], ids=name_of)
 def test_simulator_agrees_when_hot(designs: Designs, spec: Path, simulator: Simulator) -> None:
     folder_differences(simulator, folder_of(designs, spec, HOT)).check()
 
