@@ -12,6 +12,7 @@ import pytest
 from tests.evidence import AT_LEAST, AT_MOST, EVIDENCE, RUNS, Entry, read, record, write
 
 MISSED: dict[str, str] = {
+    "synth design, quick": "the search over section circuits and orders takes longer than the imports three times",
     "rounding, Q": "a section may end up 1 % from its Q once the chain's gain is trimmed",
 }
 
