@@ -15,7 +15,7 @@ from synth.circuit.analysis import (
 )
 from synth.circuit.assemble import INPUT, INPUT_TRANSCONDUCTANCE, OUTPUT, TERMINAL, Drawn, build_network, build_values
 from synth.circuit.batch import batch_response
-from synth.circuit.loop import Margin, phase_margin, return_ratio
+from synth.circuit.loop import Margin, phase_margin, phase_margins, return_ratio
 from synth.circuit.modes import growth, is_stable, poles, resonant_pairs, zeros
 from synth.circuit.netlist import comment_text, netlist_text
 from synth.circuit.network import ZERO_CELSIUS, Network
@@ -43,6 +43,7 @@ __all__ = [
     "node_voltages",
     "noise",
     "phase_margin",
+    "phase_margins",
     "poles",
     "resistances",
     "resonant_pairs",

@@ -19,7 +19,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from synth.circuit.linear import frequency_array, scaled_systems, solve
+from synth.circuit.linear import frequency_array, scaled_systems, solve, solve_many
 from synth.circuit.network import BOLTZMANN, ComplexArray, FloatArray, Matrices, Network, matrices
 from synth.errors import CircuitError
 
@@ -85,8 +85,7 @@ def resistances(network: Network, frequencies: ArrayLike) -> ComplexArray:
     """Voltage of every node (row) for one ampere into every node (column), the input at rest [ohm], (F, n, n)."""
     m = matrices(network)
     Y, scale = scaled_systems(m, frequency_array(frequencies))
-    columns = [solve(Y, np.eye(len(m.nodes))[k] / scale) for k in range(len(m.nodes))]
-    return np.stack(columns, axis=2)
+    return solve_many(Y, np.eye(len(m.nodes)) / scale[:, :, None])
 
 
 def response_and_delay(network: Network, frequencies: ArrayLike) -> tuple[ComplexArray, FloatArray]:
@@ -143,11 +142,12 @@ def node_noise(network: Network, nodes: Sequence[str], frequencies: ArrayLike) -
     if missing:
         raise CircuitError(f"no node {missing[0]!r} in the circuit; it has {', '.join(m.nodes)}")
     Y, scale = scaled_systems(m, f)
+    readout = np.zeros((f.size, len(m.nodes), len(nodes)))
+    readout[:, [m.index(node) for node in nodes], range(len(nodes))] = 1.0
+    adjoint = solve_many(np.swapaxes(Y, 1, 2), readout) / scale[:, :, None]
     power = np.zeros((len(nodes), f.size))
-    for k, node in enumerate(nodes):
-        readout = np.zeros(len(m.nodes))
-        readout[m.index(node)] = 1.0
-        y = solve(np.swapaxes(Y, 1, 2), readout) / scale
+    for k in range(len(nodes)):
+        y = adjoint[:, :, k]
         power[k] = sum(np.abs(_across(y, m, ends)) ** 2 * square for _, ends, square in _generators(network, f))
     return np.sqrt(power)
 

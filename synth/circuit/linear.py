@@ -36,8 +36,18 @@ def solve(Y: ComplexArray, rhs: ComplexArray | FloatArray) -> ComplexArray:
     Raises:
         CircuitError: there is no unique or no finite solution.
     """
+    columns = np.asarray(np.broadcast_to(rhs, Y.shape[:2])[..., None], dtype=np.complex128)
+    return np.asarray(solve_many(Y, columns)[..., 0], dtype=np.complex128)
+
+
+def solve_many(Y: ComplexArray, rhs: ComplexArray | FloatArray) -> ComplexArray:
+    """Solutions of Y X = rhs for several right-hand sides, shapes (F, n, n), (F, n, k) and (F, n, k).
+
+    Raises:
+        CircuitError: there is no unique or no finite solution.
+    """
     try:
-        x = np.asarray(np.linalg.solve(Y, np.broadcast_to(rhs, Y.shape[:2])[..., None])[..., 0], dtype=np.complex128)
+        x = np.asarray(np.linalg.solve(Y, rhs), dtype=np.complex128)
     except np.linalg.LinAlgError:
         raise CircuitError("the circuit has no unique solution; a node has no path to ground") from None
     if not np.all(np.isfinite(x)):

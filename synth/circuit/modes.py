@@ -15,11 +15,12 @@ from synth.errors import CircuitError
 
 ZERO = 1e-9  # of the reference: a pole nearer to zero is at zero
 FARTHEST = 1e7  # poles beyond this multiple of the reference are taken as infinite
+OUTERMOST = 1e9  # beyond this multiple nothing is looked for
 FAR = 1e3  # beyond this multiple of the reference a pole must prove itself
 
 
-def _finite_eigenvalues(G: FloatArray, C: FloatArray, reference: float) -> ComplexArray:
-    """Finite s with det(G + s C) = 0, sorted by magnitude and then imaginary part [rad/s]."""
+def _finite_eigenvalues(G: FloatArray, C: FloatArray, reference: float, farthest: float) -> ComplexArray:
+    """Finite s with det(G + s C) = 0 up to a multiple of the reference [rad/s], by magnitude, then imaginary part."""
     shift = reference * 0.7310585786300049  # no natural frequency of a real circuit sits exactly here
     shifted = G + shift * C
     rows = np.abs(shifted).max(axis=1)
@@ -27,7 +28,7 @@ def _finite_eigenvalues(G: FloatArray, C: FloatArray, reference: float) -> Compl
         spectrum = np.linalg.eigvals(np.linalg.solve(shifted / rows[:, None], C / rows[:, None]))
     except np.linalg.LinAlgError:
         raise CircuitError("the circuit has no unique solution; a node has no path to ground") from None
-    spectrum = spectrum[np.abs(spectrum) > 1.0 / (FARTHEST * reference)]
+    spectrum = spectrum[np.abs(spectrum) > 1.0 / (farthest * reference)]
     s = (shift - 1.0 / spectrum).astype(complex)
     s = s[[abs(x) < FAR * reference or _vanishes(G, C, x) for x in s]]
     return s[np.lexsort((s.imag, np.abs(s)))]
@@ -52,20 +53,28 @@ def _reference(reference_frequency: float) -> float:
 
 
 def poles(network: Network, reference_frequency: float) -> ComplexArray:
-    """All finite poles [rad/s], the largest pole at most 1e7 times the reference frequency [Hz]."""
-    m = matrices(network)
-    return _finite_eigenvalues(m.G, m.C, _reference(reference_frequency))
+    """All finite poles [rad/s] up to 1e7 times the reference frequency [Hz], or as many more as there are zeros.
+
+    A pole so far away does nothing in the band, but a transfer has no more zeros than poles.
+    """
+    m, reference = matrices(network), _reference(reference_frequency)
+    found = _finite_eigenvalues(m.G, m.C, reference, OUTERMOST)
+    inside = int(np.searchsorted(np.abs(found), FARTHEST * reference))
+    count = max(inside, min(zeros(network, reference_frequency).size, found.size))
+    if 0 < count < found.size and found[count - 1].imag < 0 and found[count].imag > 0:
+        count += 1  # a conjugate pair stays together
+    return found[:count]
 
 
 def zeros(network: Network, reference_frequency: float) -> ComplexArray:
-    """All finite zeros of the transfer from input to output [rad/s], as `poles`."""
+    """All finite zeros of the transfer from input to output [rad/s], up to 1e7 times the reference frequency [Hz]."""
     m = matrices(network)
     n = len(m.nodes)
     G, C = np.zeros((n + 1, n + 1)), np.zeros((n + 1, n + 1))
     G[:n, :n], C[:n, :n] = m.G, m.C
     G[:n, n] = -m.b
     G[n, m.output] = 1.0
-    return _finite_eigenvalues(G, C, _reference(reference_frequency))
+    return _finite_eigenvalues(G, C, _reference(reference_frequency), FARTHEST)
 
 
 def resonant_pairs(s: ComplexArray) -> tuple[tuple[float, float], ...]:

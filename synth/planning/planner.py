@@ -26,6 +26,7 @@ from synth.verification import relative_margin, verify
 from synth.verification.cautions import cautions
 
 MOST_SECTIONS = 6
+KIND_LETTERS = {"gain": "G", "pre-emphasis": "P", "bandpass": "B"}
 QUICK_BUILDS = 2500  # drawn for each candidate
 MOST_JUDGED = 8  # candidates built in full before the best of them is taken
 
@@ -149,7 +150,7 @@ def _describe(proposal: _Proposal, chain: Chain | None) -> str:
     if chain is None:
         return text
     signal = [stage for stage in chain.stages if stage.kind != "reference"]
-    return f"{text}: " + ", ".join(f"{'G' if s.kind == 'gain' else 'B'} {s.op_amp}" for s in signal)
+    return f"{text}: " + ", ".join(f"{KIND_LETTERS[s.kind]} {s.op_amp}" for s in signal)
 
 
 def _proposals(spec: Spec) -> Iterator[_Proposal]:

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 from synth import circuit
 from synth.errors import InfeasibleError
 from synth.model.chain import Chain
 from synth.model.part import OpAmp
-from synth.planning.amplifiers import DEFAULT_ACCURACY
+from synth.planning.amplifiers import DEFAULT_ACCURACY, suits_sections
 from synth.quantity import format_si
 from synth.rounding import chain_gain
 from synth.spec import Spec
@@ -25,19 +25,9 @@ MOST_REFERENCES = 3
 LARGE_CHANGE = 0.2  # of gain: shown in dB from here on
 
 
-@dataclass(frozen=True, slots=True)
-class Mended:
-    """References chosen, and the gain at the centre over the ideal one: with them, and with a bare divider."""
-
-    references: tuple[Reference, ...]
-    ratio: float
-    bare_ratio: float
-    bare_stable: bool
-
-
 def choose_references(
     spec: Spec, drafts: Sequence[Draft], op_amps: tuple[OpAmp, ...], stocks: Stocks, around: Surroundings
-) -> Mended:
+) -> tuple[Reference, ...]:
     """The simplest reference whose loop costs less than its share, tried on the exact circuit.
 
     A bare divider first, then a follower with its own decoupling, then separate followers for early and late stages.
@@ -47,12 +37,11 @@ def choose_references(
     """
     accuracy = spec.target.accuracy if spec.target.accuracy is not None else DEFAULT_ACCURACY
     ideal = chain_gain(place(drafts, stocks, around))
-    bare = _effect(replace(around, references=(_divider(stocks, BARE[1]),)), drafts, stocks, ideal)
     best = math.inf
     for references in _options(spec, drafts, op_amps, stocks):
         ratio, stable = _effect(replace(around, references=references), drafts, stocks, ideal)
         if stable and abs(ratio - 1) <= SHARE * accuracy:
-            return Mended(references, ratio, *bare)
+            return references
         best = min(best, abs(ratio - 1)) if stable else best
     found = "none of them is stable" if math.isinf(best) else f"the best costs {100 * best:.2g} % of gain"
     raise InfeasibleError(
@@ -66,7 +55,7 @@ def _options(
 ) -> Iterator[tuple[Reference, ...]]:
     values = stocks.coupling.values
     yield (_divider(stocks, float(values[-1])),)
-    followers = [a for a in op_amps if a.minimum_noise_gain <= 1]
+    followers = [a for a in op_amps if suits_sections(a)]
     if not followers:
         return
     center = spec.target.center_frequency
@@ -108,16 +97,18 @@ def _effect(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks, ideal
     return chain_gain(chain) / ideal, stable
 
 
-def reference_caution(found: Mended) -> str:
-    """What the references do and what a bare divider would do, in words."""
-    kind = found.references[0].topology.title
-    if len(found.references) > 1:
-        kind = f"{len(found.references)} separate references, each a {kind}"
+def reference_caution(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> str:
+    """What a chain's references do to its gain at the centre and what a bare divider would do, in words."""
+    references = around.references
+    ideal = chain_gain(place(drafts, stocks, replace(around, references=())))
+    ratio, _ = _effect(around, drafts, stocks, ideal)
+    bare_ratio, stable = _effect(replace(around, references=(_divider(stocks, BARE[1]),)), drafts, stocks, ideal)
+    kind = references[0].topology.title
+    if len(references) > 1:
+        kind = f"{len(references)} separate references, each a {kind}"
     bare = f"{format_si(BARE[0], 'ohm')}/{format_si(BARE[1], 'F')} divider"
-    effect = f"would change it by {_change(found.bare_ratio)}"
-    if not found.bare_stable:
-        effect += " and make the chain oscillate"
-    return f"mid-rail: {kind}, changes the gain at the centre by {_change(found.ratio)}; a bare {bare} {effect}"
+    effect = f"would change it by {_change(bare_ratio)}{'' if stable else ' and make the chain oscillate'}"
+    return f"mid-rail: {kind}, changes the gain at the centre by {_change(ratio)}; a bare {bare} {effect}"
 
 
 def _change(ratio: float) -> str:

@@ -96,9 +96,11 @@ def build_chain(shop: Workshop, pairs: Sequence[PolePair], split: Partition) -> 
         variants[[draft.topology.kind for draft in best[1]].index("pre-emphasis")] = emphasis.shelf.variants
     notes: tuple[str, ...] = ()
     if shop.spec.supply.negative is None:
-        mended = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
-        around, notes = replace(around, references=mended.references), (reference_caution(mended),)
+        references = choose_references(shop.spec, best[1], shop.op_amps, shop.stocks, around)
+        around = replace(around, references=references)
     trimmed = trim_chain(best[1], variants, shop.stocks, around, shop.spec.overall_gain)
+    if around.references:
+        notes = (reference_caution(trimmed, shop.stocks, around),)
     notes = (*notes, insertion_note(shop.spec), *emphasis_notes(emphasis, trimmed, shop.stocks, around))
     chain = place(trimmed, shop.stocks, around)
     if problem := dc_path_problem(chain):
@@ -151,8 +153,7 @@ def _margin(shop: Workshop, section: Section) -> float:
         center = shop.spec.target.center_frequency
         source = Surroundings(center, shop.spec.environment.ambient, Sensor(1.0, "V"), None, 0.0)
         network = circuit.build_network(place([draft], shop.stocks, source))
-        low, high = (center * span for span in MARGIN_SPAN)
-        found = (circuit.phase_margin(network, a.ref, low, high) for a in network.amplifiers)
+        found = circuit.phase_margins(network, center * MARGIN_SPAN[0], center * MARGIN_SPAN[1])
         shop.margins[key] = min(margin.phase_margin for margin in found)
     return shop.margins[key]
 

@@ -79,7 +79,7 @@ def largest_gain(frequency: float, gain_bandwidth: float, dc_gain: float, share:
 
     Example:
         >>> round(largest_gain(1e5, 80e6, 1e6, 0.3, 0.005), 1)
-        66.4
+        79.1
     """
     low, high = 0.0, 7.0  # decades
     if spread(1.0, frequency, gain_bandwidth, dc_gain, share) > allowed:

@@ -49,7 +49,7 @@ def response_table(network: circuit.Network, center: float, bandwidth: float) ->
     return ResponseTable(f[order], gain, delay, is_close)
 
 
-def realized(network: circuit.Network, table: ResponseTable, spec: Spec) -> Realized:
+def realized(network: circuit.Network, table: ResponseTable, spec: Spec, with_poles: bool = True) -> Realized:
     """Centre, bandwidth and gains of the chain, the -3 dB points solved for, not interpolated.
 
     Raises:
@@ -75,15 +75,17 @@ def realized(network: circuit.Network, table: ResponseTable, spec: Spec) -> Real
         high,
         20 * math.log10(abs(at_center)),
         20 * math.log10(terminal),
-        tuple(complex(p) for p in circuit.poles(network, center)),
+        tuple(complex(p) for p in circuit.poles(network, center)) if with_poles else (),
     )
 
 
 def nominal_band(chain: Chain, spec: Spec) -> Realized:
     """Centre, bandwidth and gains of a chain, without the rest of its verdict."""
-    network = circuit.build_network(chain)
-    table = response_table(network, spec.target.center_frequency, spec.target.bandwidth)
-    return realized(network, table, spec)
+    network, center = circuit.build_network(chain), spec.target.center_frequency
+    f = close_grid(center, spec.target.bandwidth)
+    gain = circuit.batch_response(network, network.values[:, None], f)[:, 0]
+    nothing = np.zeros(f.size)
+    return realized(network, ResponseTable(f, gain, nothing, nothing == 0), spec, with_poles=False)
 
 
 def _at(table: ResponseTable, frequency: float) -> complex:

@@ -35,10 +35,7 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verifica
     band = realized(network, table, spec)
     noise = noise_table(network, table, band, spec)
     found = excursions(chain, network, spec, output_noise(chain, network))
-    margins = tuple(
-        circuit.phase_margin(network, a.ref, center * MARGIN_SPAN[0], center * MARGIN_SPAN[1])
-        for a in network.amplifiers
-    )
+    margins = circuit.phase_margins(network, center * MARGIN_SPAN[0], center * MARGIN_SPAN[1])
     requirements = (*judged(spec, network, table, band, noise), *derived(found, margins, band))
     drawn = None
     if builds > 0:

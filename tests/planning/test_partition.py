@@ -15,12 +15,14 @@ from synth.planning.amplifiers import (
     LARGEST_LOSS,
     LARGEST_SHIFT,
     NOISE_SLACK,
+    SECTION_MARGIN,
     allowed_topologies,
     choose_section_circuits,
     gain_candidates,
     input_noise,
     largest_q,
     section_circuits,
+    section_margin,
     suits_sections,
 )
 from synth.planning.partition import MOST_GAIN_STAGES, noise_allowance, orders, partitions
@@ -191,10 +193,11 @@ def test_section_amplifiers_are_stable_at_unity_gain(spec: Spec, catalog: tuple[
     for q in (2.0, 10.0, 20.0):
         found = section_circuits(spec, catalog, q, allowed_topologies(spec))
         assert found
+        assert suits_sections(found[0].op_amp)
+        assert section_margin(found[0].op_amp, found[0].topology) >= SECTION_MARGIN
         for one in found:
             assert one.op_amp in catalog
             assert one.op_amp.minimum_noise_gain <= 1
-            assert suits_sections(one.op_amp)
             assert q <= one.topology.largest_q
             shift, stretch = one.topology.shift(q, 60e3 / one.op_amp.gain_bandwidth)
             assert max(abs(shift), abs(stretch)) <= LARGEST_SHIFT

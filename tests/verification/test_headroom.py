@@ -46,8 +46,18 @@ def test_a_square_wave_has_odd_harmonics_up_to_the_highest_frequency() -> None:
 def test_all_harmonics_together_have_the_level() -> None:
     """Parseval: what is left out above n harmonics is about 4/(pi^2 n) of the power."""
     for level in (0.3, 1.0):
-        _, peak = tones(square(level), 1e3 * 200_001)
-        assert math.sqrt((peak**2 / 2).sum()) == pytest.approx(level, rel=1e-5)
+        f, peak = tones(square(level), 1e3 * 199)
+        assert np.array_equal(f, 1e3 * np.arange(1.0, 199.0, 2.0))
+        assert math.sqrt((peak**2 / 2).sum()) == pytest.approx(level * math.sqrt(1 - 4 / np.pi**2 / 199), rel=1e-5)
+
+
+def test_high_harmonics_stand_in_bands_with_all_their_amplitude() -> None:
+    """Amplitudes 4/(n pi) of all odd n, summed one by one, against the bands; far fewer frequencies."""
+    f, peak = tones(square(), 1e3 * 200_001)
+    n = np.arange(1.0, 200_001.0, 2.0)
+    assert peak.sum() == pytest.approx((4 / (n * np.pi)).sum(), rel=2e-3)
+    assert f.size < 300
+    assert np.all(np.diff(f) > 0)
 
 
 def test_a_fundamental_above_the_highest_frequency_still_counts() -> None:

@@ -86,7 +86,7 @@ def test_a_relative_margin_has_the_sign_of_the_verdict() -> None:
 
 
 def excursion(ref: str, **figures: float) -> Excursion:
-    plain = Excursion(ref, 0.7, 0.0, 1.0, 3.0, 1e5, 1e6, 0.1, 2.0)
+    plain = Excursion(ref, 0.7, 0.0, 1.0, 3.0, 1e5, 1e6, 0.1, 2.0, 1e-3, 40e-3)
     return replace(plain, **figures)
 
 
