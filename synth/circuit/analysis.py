@@ -96,7 +96,7 @@ def response_and_delay(network: Network, frequencies: ArrayLike) -> tuple[Comple
         >>> rc = (Element("g1", "transconductance", ("0", "a", "in", "0"), 1e-3),
         ...       Element("g2", "conductance", ("a", "0"), 1e-3), Element("c1", "capacitance", ("a", "0"), 1e-9))
         >>> h, delay = response_and_delay(Network("in", "a", rc, (), (), 300.15), [0.0])
-        >>> round(abs(h[0]), 9), round(delay[0] * 1e6, 9)
+        >>> round(float(abs(h[0])), 9), round(float(delay[0]) * 1e6, 9)
         (1.0, 1.0)
     """
     m = matrices(network)

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, field, replace
 
 from synth.approximation import FAMILIES, PolePair, bandpass_pairs
 from synth.errors import CircuitError, InfeasibleError
@@ -16,7 +16,7 @@ from synth.planning.amplifiers import largest_q
 from synth.planning.bend import build_on_target, proposed_ripple
 from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
 from synth.planning.front import choose_front
-from synth.planning.partition import partitions
+from synth.planning.partition import Partition, partitions
 from synth.planning.safe import at_least
 from synth.planning.workshop import Workshop
 from synth.quantity import format_si
@@ -28,6 +28,7 @@ from synth.verification.cautions import cautions
 MOST_SECTIONS = 6
 KIND_LETTERS = {"gain": "G", "pre-emphasis": "P", "bandpass": "B"}
 QUICK_BUILDS = 2500  # drawn for each candidate
+WORTHWHILE = 0.01  # of yield, that two more sections should bring
 MOST_JUDGED = 8  # candidates built in full before the best of them is taken
 
 
@@ -57,6 +58,11 @@ class _Built:
     def missed(self) -> set[str]:
         return {r.name for r in self.verdict.requirements if r.met is False}
 
+    @property
+    def share(self) -> float:
+        """Share of builds that meet everything counted, 1 where none were drawn."""
+        return self.verdict.builds.share if self.verdict.builds is not None else 1.0
+
     def worst(self) -> float:
         missed = [relative_margin(r) for r in self.verdict.requirements if r.met is False]
         return min(missed, default=0.0)
@@ -79,34 +85,14 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
     gain = spec.overall_gain / spec.sensor.scale / attenuation
     front = choose_front(spec, usable, stocks, gain)
     splits = partitions(spec, usable, gain if front is None else gain / front.gain, attenuation)
-    shop = Workshop(spec, usable, stocks, attenuation, front)
-    built: list[_Built] = []
-    lost: list[Candidate] = []
-    failure: InfeasibleError | None = None
-    for proposal in _proposals(spec):
-        if _hopeless(proposal, built):
-            continue
-        screened = _screen(spec, proposal)
-        if screened is not None:
-            lost.append(screened)
-            continue
-        for split in splits:
-            try:
-                made = build_on_target(shop, proposal.family, proposal.pairs, split)
-                verdict = verify(made.chain, spec, min(builds, QUICK_BUILDS), seed)
-                verdict = replace(verdict, cautions=(*made.notes, *verdict.cautions))
-                built.append(_Built(proposal, made.chain, verdict))
-            except (InfeasibleError, CircuitError) as error:
-                failure = failure or (error if isinstance(error, InfeasibleError) else InfeasibleError(str(error)))
-                lost.append(Candidate(_describe(proposal, None), False, "cannot be built", str(error)))
-                break
-            if built[-1].missed() != {"signal to noise"}:
-                break  # another split of the gain would not help
-        if built and (built[-1].verdict.all_met or len(built) >= MOST_JUDGED):
+    search = _Search(Workshop(spec, usable, stocks, attenuation, front), splits, min(builds, QUICK_BUILDS), seed)
+    for proposal in _proposals(spec, search.spreads_more):
+        search.attempt(proposal)
+        if search.is_over():
             break
-    if not built:
-        raise failure or _no_proposal(spec, lost)
-    chosen = _choose(built, lost)
+    if not search.built:
+        raise search.failure or _no_proposal(spec, search.lost)
+    chosen = _choose(search.built, search.lost)
     if builds <= QUICK_BUILDS:
         return chosen
     notes = chosen.verification.cautions[: len(chosen.verification.cautions) - len(cautions(spec, chosen.chain))]
@@ -114,11 +100,51 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
     return replace(chosen, verification=replace(verdict, cautions=(*notes, *verdict.cautions)))
 
 
-def _hopeless(proposal: _Proposal, built: list[_Built]) -> bool:
-    """Of an order whose gentlest family misses by its yield alone, families of higher Q spread more."""
-    same = [b for b in built if len(b.proposal.pairs) == len(proposal.pairs)]
-    highest = max(pair.q for pair in proposal.pairs)
-    return any(b.missed() == {"yield"} and max(p.q for p in b.proposal.pairs) <= highest for b in same)
+@dataclass(slots=True)
+class _Search:
+    """Chains built and judged so far, and proposals that fell before."""
+
+    shop: Workshop
+    splits: tuple[Partition, ...]
+    builds: int
+    seed: int
+    built: list[_Built] = field(default_factory=list)
+    lost: list[Candidate] = field(default_factory=list)
+    failure: InfeasibleError | None = None
+
+    def attempt(self, proposal: _Proposal) -> None:
+        """Build and judge a proposal; other splits of the gain only where noise is missed."""
+        screened = _screen(self.shop.spec, proposal)
+        if screened is not None:
+            self.lost.append(screened)
+            return
+        for split in self.splits:
+            try:
+                made = build_on_target(self.shop, proposal.family, proposal.pairs, split)
+                verdict = verify(made.chain, self.shop.spec, self.builds, self.seed)
+            except (InfeasibleError, CircuitError) as error:
+                refusal = error if isinstance(error, InfeasibleError) else InfeasibleError(str(error))
+                self.failure = self.failure or refusal
+                self.lost.append(Candidate(_describe(proposal, None), False, "cannot be built", str(error)))
+                return
+            verdict = replace(verdict, cautions=(*made.notes, *verdict.cautions))
+            self.built.append(_Built(proposal, made.chain, verdict))
+            if "signal to noise" not in self.built[-1].missed():
+                return
+
+    def spreads_more(self, _family: str, count: int) -> bool:
+        """Of an order whose gentler family misses by its yield alone, a family of higher Q spreads more."""
+        return any(b.missed() == {"yield"} for b in self.built if len(b.proposal.pairs) == count)
+
+    def is_over(self) -> bool:
+        """All is met, enough was judged, or more sections would not raise the yield that alone is missed."""
+        if not self.built:
+            return False
+        last = self.built[-1]
+        if last.verdict.all_met or len(self.built) >= MOST_JUDGED:
+            return True
+        shares = [b.share for b in self.built if b.proposal.family == last.proposal.family and b.missed() == {"yield"}]
+        return last.missed() == {"yield"} and len(shares) > 2 and max(shares[-2:]) < max(shares[:-2]) + WORTHWHILE
 
 
 def _choose(built: list[_Built], lost: list[Candidate]) -> Plan:
@@ -153,14 +179,18 @@ def _describe(proposal: _Proposal, chain: Chain | None) -> str:
     return f"{text}: " + ", ".join(f"{KIND_LETTERS[s.kind]} {s.op_amp}" for s in signal)
 
 
-def _proposals(spec: Spec) -> Iterator[_Proposal]:
-    """Families and orders, least order first; what the spec insists on is kept."""
+def _proposals(spec: Spec, skips: Callable[[str, int], bool] = lambda _family, _count: False) -> Iterator[_Proposal]:
+    """Families and orders, least order and gentlest family first; what the spec insists on is kept.
+
+    Args:
+        skips: whether to leave out a family at an order, asked before its poles are computed.
+    """
     target = spec.target
     families = (spec.filter.family,) if spec.filter.family is not None else FAMILIES
     counts = (spec.filter.sections,) if spec.filter.sections is not None else range(1, MOST_SECTIONS + 1)
     for count in counts:
         for family in families:
-            if count == 1 and family != families[0]:
+            if (count == 1 and family != families[0]) or skips(family, count):
                 continue  # one section is the same in every family
             pairs = bandpass_pairs(family, count, target.center_frequency, target.bandwidth, proposed_ripple(spec))
             yield _Proposal(family, pairs)
