@@ -20,45 +20,32 @@ from synth.topology.base import Slot, Topology
 REFERENCE = "ref"
 SUPPLY = "vcc"
 
-DIVIDER = Topology(
-    name="divider-reference",
-    title="mid-rail divider",
-    kind="reference",
-    slots=(
-        Slot("RT", "resistor", "divider, to the supply", (SUPPLY, "out")),
-        Slot("RB", "resistor", "divider, to ground", ("out", "gnd")),
-        Slot("CD", "capacitor", "decoupling", ("out", "gnd")),
-    ),
-    sign=1,
-    source="common practice, no source",
-)
 
-FOLLOWER = Topology(
-    name="follower-reference",
-    title="divider with a follower",
-    kind="reference",
-    slots=(
-        Slot("RT", "resistor", "divider, to the supply", (SUPPLY, "d")),
-        Slot("RB", "resistor", "divider, to ground", ("d", "gnd")),
-        Slot("CD", "capacitor", "decoupling of the divider", ("d", "gnd")),
-        Slot("U", "op-amp", "follower", ("d", "out", "out")),
-    ),
-    sign=1,
-    source="common practice, no source",
-)
+def _divider(node: str) -> tuple[Slot, ...]:
+    return (
+        Slot("RT", "resistor", "divider, to the supply", (SUPPLY, node)),
+        Slot("RB", "resistor", "divider, to ground", (node, "gnd")),
+        Slot("CD", "capacitor", "decoupling of the divider", (node, "gnd")),
+    )
 
-BUFFERED = Topology(
-    name="buffered-reference",
-    title="buffered mid-rail reference",
-    kind="reference",
-    slots=(
-        Slot("RT", "resistor", "divider, to the supply", (SUPPLY, "d")),
-        Slot("RB", "resistor", "divider, to ground", ("d", "gnd")),
-        Slot("CD", "capacitor", "decoupling of the divider", ("d", "gnd")),
+
+def _reference(name: str, title: str, slots: tuple[Slot, ...]) -> Topology:
+    return Topology(name, title, "reference", slots, sign=1, source="common practice, no source")
+
+
+DIVIDER = _reference("divider-reference", "mid-rail divider", _divider("out"))
+FOLLOWER = _reference(
+    "follower-reference",
+    "divider with a follower",
+    (*_divider("d"), Slot("U", "op-amp", "follower", ("d", "out", "out"))),
+)
+BUFFERED = _reference(
+    "buffered-reference",
+    "buffered mid-rail reference",
+    (
+        *_divider("d"),
         Slot("U", "op-amp", "follower", ("d", "b", "b")),
         Slot("RO", "resistor", "isolates the follower", ("b", "out")),
         Slot("CO", "capacitor", "decoupling of the reference", ("out", "gnd")),
     ),
-    sign=1,
-    source="common practice, no source",
 )
