@@ -10,39 +10,6 @@ from synth.topology.akerberg_mossberg import TOPOLOGY
 from tests.topology import placed
 
 
-@pytest.mark.parametrize("seed", range(12))
-def test_round_trip(seed: int) -> None:
-    placed.check_round_trip(TOPOLOGY, seed)
-
-
-@pytest.mark.parametrize("q", [5.0, 20.0])
-def test_amplifier_effects_are_those_of_the_circuit(q: float) -> None:
-    placed.check_amplifier_effects(TOPOLOGY, q)
-
-
-@pytest.mark.parametrize("q", [3.0, 20.0])
-def test_noise_gain_is_that_of_the_circuit(q: float) -> None:
-    placed.check_noise_gain(TOPOLOGY, q)
-
-
-@pytest.mark.parametrize("seed", range(10))
-def test_rounding_reaches_the_target_with_real_amplifiers(seed: int) -> None:
-    placed.check_rounding(TOPOLOGY, seed)
-
-
-def test_every_input_has_a_dc_path() -> None:
-    placed.check_dc_paths(TOPOLOGY)
-
-
-@pytest.mark.spice
-def test_simulators_agree() -> None:
-    placed.check_simulators(TOPOLOGY)
-
-
-def test_trimmer_leaves_bandwidth_and_gain() -> None:
-    placed.check_trimmer(TOPOLOGY)
-
-
 def test_second_integrator_swings_no_further_than_the_output() -> None:
     """R3 = R5/(R6 w0 C2): U2 has the output's amplitude at the centre, U3 a third of it."""
     network = placed.section_network(TOPOLOGY, placed.values(TOPOLOGY, 10e3, 10.0, 1.0, 1e-9, 2.2e-9))

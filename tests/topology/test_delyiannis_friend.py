@@ -8,35 +8,6 @@ from synth.topology.delyiannis_friend import TOPOLOGY, feedback_ratio
 from tests.topology import placed
 
 
-@pytest.mark.parametrize("seed", range(12))
-def test_round_trip(seed: int) -> None:
-    placed.check_round_trip(TOPOLOGY, seed)
-
-
-@pytest.mark.parametrize("q", [5.0, 20.0])
-def test_amplifier_effects_are_those_of_the_circuit(q: float) -> None:
-    placed.check_amplifier_effects(TOPOLOGY, q)
-
-
-@pytest.mark.parametrize("q", [3.0, 20.0])
-def test_noise_gain_is_that_of_the_circuit(q: float) -> None:
-    placed.check_noise_gain(TOPOLOGY, q)
-
-
-@pytest.mark.parametrize("seed", range(10))
-def test_rounding_reaches_the_target_with_real_amplifiers(seed: int) -> None:
-    placed.check_rounding(TOPOLOGY, seed)
-
-
-def test_every_input_has_a_dc_path() -> None:
-    placed.check_dc_paths(TOPOLOGY)
-
-
-@pytest.mark.spice
-def test_simulators_agree() -> None:
-    placed.check_simulators(TOPOLOGY)
-
-
 @pytest.mark.parametrize("q", [1.5, 4.0, 7.5, 12.0, 20.0])
 @pytest.mark.parametrize("c2", [0.3e-9, 1e-9, 3e-9])
 def test_spread_is_comfortable(q: float, c2: float) -> None:

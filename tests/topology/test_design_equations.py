@@ -31,9 +31,7 @@ def test_multiple_feedback_round_trip(seed: int) -> None:
 @pytest.mark.parametrize("q", [2.0, 10.0])
 def test_most_gain_of_a_multiple_feedback_section(q: float) -> None:
     """2 Q^2 for equal capacitors: there R1B is open, beyond it negative."""
-    below, beyond = (
-        float(multiple_feedback.resistors(1e3, q, 2 * q**2 * x, 1e-8, 1e-8)[1]) for x in (0.999, 1.001)
-    )
+    below, beyond = (float(multiple_feedback.resistors(1e3, q, 2 * q**2 * x, 1e-8, 1e-8)[1]) for x in (0.999, 1.001))
     assert below > 100 * float(multiple_feedback.resistors(1e3, q, 1.0, 1e-8, 1e-8)[1])
     assert beyond < 0
 
