@@ -191,7 +191,7 @@ def check(given: Design | Path | str) -> Design:
     """
     old = given if isinstance(given, Design) else load_design(given)
     drawn = old.verification.builds
-    verdict = verify(old.chain, old.spec, drawn.count if drawn is not None else 0, old.record.seed)
+    verdict = verify(old.chain, old.spec, drawn.count if drawn is not None else 0, old.record.seed, layout=True)
     if not old.edited:  # what the planner had to say still holds
         verdict = replace(verdict, cautions=old.verification.cautions)
     return replace(old, record=replace(old.record, verification=verdict))

@@ -1,13 +1,14 @@
-"""The drawn builds in design.json, out and in."""
+"""The drawn builds and the demands on the layout in design.json, out and in."""
 
 from __future__ import annotations
 
 from synth.folder.reader import Node
-from synth.model.judgement import Builds, BuildYield
+from synth.model.judgement import Builds, BuildYield, LayoutDemand
 
 BUILDS = ("count", "seed", "trim", "share", "low", "high", "yields")
 YIELD = ("name", "counted", "share", "low", "high", "causes")
 CAUSE = ("item", "share")
+DEMAND = ("source", "output", "victim", "node", "limit", "critical")
 
 
 def encode_builds(builds: Builds | None) -> dict[str, object] | None:
@@ -63,4 +64,16 @@ def _yield(node: Node) -> BuildYield:
         low=node.number("low", least=0),
         high=node.number("high", least=0),
         causes=tuple((c.text("item"), c.number("share", least=0)) for c in node.nodes("causes", CAUSE)),
+    )
+
+
+def decode_demand(node: Node) -> LayoutDemand:
+    """A demand on the layout."""
+    return LayoutDemand(
+        source=node.text("source"),
+        output=node.text("output"),
+        victim=node.text("victim"),
+        node=node.text("node"),
+        limit=node.number("limit", above=0),
+        critical=node.optional("critical", above=0),
     )

@@ -12,7 +12,7 @@ from typing import get_args
 import numpy as np
 
 from synth.errors import FolderError, SpecError
-from synth.folder.builds import decode_builds
+from synth.folder.builds import DEMAND, decode_builds, decode_demand
 from synth.folder.document import DESIGN_FILE, Document, load_document, named
 from synth.folder.migrate import migrate
 from synth.folder.reader import Node
@@ -41,7 +41,7 @@ PART_KINDS: dict[str, PartKind] = {"resistor": "resistor", "capacitor": "capacit
 
 TOP = (
     "version", "title", "seed", "spec", "input_unit", "inputs", "family", "order", "chain", "models", "sensor_model",
-    "stages", "parts", "response", "realized", "noise", "requirements", "builds",
+    "stages", "parts", "response", "realized", "noise", "requirements", "builds", "layout",
     "candidates", "cautions", "seal",
 )  # fmt: skip
 CHAIN = ("center_frequency", "ambient", "load_resistance", "load_capacitance")
@@ -246,6 +246,7 @@ def _verification(top: Node) -> Verification:
         requirements=tuple(_requirement(node) for node in top.nodes("requirements", REQUIREMENT)),
         cautions=top.texts("cautions"),
         builds=decode_builds(top),
+        layout=tuple(decode_demand(node) for node in top.nodes("layout", DEMAND)),
     )
 
 

@@ -50,6 +50,7 @@ def encode(record: DesignRecord) -> Document:
         "noise": _noise(found.noise),
         "requirements": [_requirement(requirement) for requirement in found.requirements],
         "builds": encode_builds(found.builds),
+        "layout": [_figures(demand) for demand in found.layout],
         "candidates": [_candidate(candidate) for candidate in record.candidates],
         "cautions": list(found.cautions),
     }

@@ -181,6 +181,24 @@ class Builds:
 
 
 @dataclass(frozen=True, slots=True)
+class LayoutDemand:
+    """A stray capacitance that the layout must stay below.
+
+    Attributes:
+        source: later stage; output: its output node; victim: earlier stage, or "sensor"; node: where it picks up.
+        limit: [F] that changes the gain at the centre by its share of the accuracy.
+        critical: [F] at which the chain oscillates, None where no capacitance there makes it.
+    """
+
+    source: str
+    output: str
+    victim: str
+    node: str
+    limit: float
+    critical: float | None
+
+
+@dataclass(frozen=True, slots=True)
 class Verification:
     """Everything the judges say about one chain against one spec; `builds` is None where none were drawn."""
 
@@ -192,6 +210,7 @@ class Verification:
     requirements: tuple[Requirement, ...]
     cautions: tuple[str, ...]
     builds: Builds | None = None
+    layout: tuple[LayoutDemand, ...] = ()
 
     @property
     def all_met(self) -> bool:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from synth.model.judgement import Realized
 from synth.model.record import Candidate, DesignRecord
 from synth.output.builds_block import build_lines
+from synth.output.layout_block import layout_lines
 from synth.output.requirement_table import requirement_table, verdict_text
 from synth.output.stage_blocks import stage_lines
 from synth.output.text import GAP, align_units, ascii_line, heading, percent_text, quantity_text, table, wrap
@@ -32,6 +33,8 @@ def report_text(record: DesignRecord) -> str:
     lines += heading("Realized") + _realized_lines(record)
     lines += heading("Noise") + _noise_lines(record)
     lines += heading("Headroom at full scale") + _headroom_lines(record)
+    if verification.layout:
+        lines += heading("Layout demands") + layout_lines(record)
     if record.candidates:
         lines += heading("Candidates") + _candidate_lines(record.candidates)
     if verification.cautions:

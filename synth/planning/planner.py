@@ -93,10 +93,9 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
     if not search.built:
         raise search.failure or _no_proposal(spec, search.lost)
     chosen = _choose(search.built, search.lost)
-    if builds <= QUICK_BUILDS:
-        return chosen
-    notes = chosen.verification.cautions[: len(chosen.verification.cautions) - len(cautions(spec, chosen.chain))]
-    verdict = verify(chosen.chain, spec, builds, seed)
+    said = chosen.verification.cautions
+    notes = said[: len(said) - len(cautions(spec, chosen.chain))]
+    verdict = verify(chosen.chain, spec, builds, seed, layout=True)
     return replace(chosen, verification=replace(verdict, cautions=(*notes, *verdict.cautions)))
 
 

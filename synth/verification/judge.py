@@ -13,6 +13,7 @@ from synth.model.judgement import Realized, SensorModel, StageResult, Verificati
 from synth.spec import Spec
 from synth.verification.builds.judge import judge_builds
 from synth.verification.cautions import cautions
+from synth.verification.coupling import layout_demands
 from synth.verification.figures import noise_table, realized, response_table
 from synth.verification.headroom import Excursion, excursions, output_noise
 from synth.verification.requirements import derived, judged, not_judged
@@ -20,11 +21,12 @@ from synth.verification.requirements import derived, judged, not_judged
 MARGIN_SPAN = (1e-3, 1e5)  # of the centre: where loop gains are searched for their unity crossings
 
 
-def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verification:
+def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0, layout: bool = False) -> Verification:
     """All figures of a chain and the verdict on every requirement.
 
     Args:
         builds: how many builds to draw, 0 for the nominal one alone; seed: of the draws.
+        layout: whether the demands on the layout are worked out, too.
 
     Raises:
         CircuitError: the chain has no solution, or is no bandpass.
@@ -44,8 +46,9 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0) -> Verifica
     model = sensor_figures(chain.sensor, chain.center_frequency)
     pairs = match_pairs(chain, band, model)
     stages = _stage_results(chain, network, pairs, found, margins, spec.target.full_scale)
+    demands = layout_demands(chain, network, spec) if layout else ()
     return Verification(
-        table, noise, band, model, stages, requirements, cautions(spec, chain, drawn is not None), drawn
+        table, noise, band, model, stages, requirements, cautions(spec, chain, drawn is not None), drawn, demands
     )
 
 
