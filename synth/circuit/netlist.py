@@ -13,7 +13,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 
-from synth.circuit.network import ELEMENTARY_CHARGE, ZERO_CELSIUS, Element, Network, NoiseSource
+from synth.circuit.network import ELEMENTARY_CHARGE, GROUND, ZERO_CELSIUS, Element, Network, NoiseSource
 from synth.errors import CircuitError
 
 BIAS_VOLTAGE = 0.1  # [V] low, so that the bias current depends little on a simulator's constants
@@ -24,6 +24,7 @@ DIFFERENTIATOR = 1e-12  # [F] makes a current that grows with frequency
 THERMAL_VOLTAGE = 1.380649e-23 * (DIODE_CELSIUS + ZERO_CELSIUS) / ELEMENTARY_CHARGE
 BIAS_CURRENT = SATURATION_CURRENT * math.expm1(BIAS_VOLTAGE / THERMAL_VOLTAGE)
 PAIR_DENSITY = math.sqrt(4 * ELEMENTARY_CHARGE * BIAS_CURRENT)  # [A/rtHz] of two diodes' difference
+LEAK = 1e-12  # [S] from nodes that only capacitors hold: without it a simulator finds no operating point for them
 WIDTH = 100  # characters of a comment
 
 
@@ -52,6 +53,7 @@ def netlist_text(
     lines += [f"* {comment_text(text)}" for text in comments]
     lines += ["", f"VSIG {network.input} 0 DC 0 AC 1"]
     lines += [_element_line(element) for element in network.elements]
+    lines += [f"Gleak{k + 1} {n} 0 {n} 0 {_number(LEAK)}" for k, n in enumerate(_floating_nodes(network))]
     if with_noise and network.noise:
         lines += ["", "* noise generators", f"VNOISE nbias 0 DC {_number(BIAS_VOLTAGE)}"]
         models = {corner: f"DN{k + 1}" for k, corner in enumerate(_corners(network.noise))}
@@ -86,6 +88,15 @@ def _check_names(network: Network) -> None:
         if elements.setdefault(line.lower(), element.name) != element.name:
             other = elements[line.lower()]
             raise CircuitError(f"{element.name} is the same as {other} to a simulator; rename one of them")
+
+
+def _floating_nodes(network: Network) -> list[str]:
+    """One node of each group that hangs on nothing but capacitors."""
+    groups: list[set[str]] = [{GROUND, network.input}]
+    for nodes in [set(e.nodes) for e in network.elements if e.kind != "capacitance"] + [{n} for n in network.unknowns]:
+        touched = [group for group in groups if group & nodes]
+        groups = [group for group in groups if not group & nodes] + [nodes.union(*touched)]
+    return sorted(min(group) for group in groups if GROUND not in group)
 
 
 def _number(value: float) -> str:

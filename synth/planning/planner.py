@@ -17,6 +17,7 @@ from synth.planning.bend import build_on_target, proposed_ripple
 from synth.planning.bounds import check_source_noise, check_supported, sensor_gain, usable_op_amps
 from synth.planning.front import choose_front
 from synth.planning.partition import Partition, partitions
+from synth.planning.remedies import remedies
 from synth.planning.safe import at_least
 from synth.planning.workshop import Workshop
 from synth.quantity import format_si
@@ -96,6 +97,7 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
     said = chosen.verification.cautions
     notes = said[: len(said) - len(cautions(spec, chosen.chain))]
     verdict = verify(chosen.chain, spec, builds, seed, layout=True)
+    notes = (*remedies(chosen.chain, spec, verdict, seed), *notes)
     return replace(chosen, verification=replace(verdict, cautions=(*notes, *verdict.cautions)))
 
 
