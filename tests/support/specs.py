@@ -4,9 +4,12 @@ Each section of the spec has its own choosers, and each chooser its own stream o
 changes no spec but by what it adds.  A chooser fills in its part of `Sketch.tables`; what the others need to know of
 the whole (the signal at the terminals, the noise there) is drawn first.
 
-The committed specs in tests/specs were written, into an empty folder, by
+The first twenty specs in tests/specs were written, into an empty folder, by
 
     python -m tests.support.specs tests/specs --count 20 --seed 2
+
+when there were fewer section circuits to draw from.  Those of other sensors, circuits and supplies are written by
+tests/specs/wide.py, which draws with the choosers of this file.
 """
 
 from __future__ import annotations
@@ -53,13 +56,16 @@ class Sketch:
     """What is known of a spec while it is drawn.
 
     Attributes:
-        seed: of all its streams; tables: the spec so far.
+        seed: of all its streams; tables: the spec so far; files: what it names, by name.
         unit: of the sensor's input; center, bandwidth: [Hz]; gain: [V/V] terminals to output; output: [V] rms.
         rails: [V]; scale: [V per unit]; resistance: [ohm]; loss: the sensor's gain at the centre re its flat region;
         ambient: [degC].
+        output_kind: "voltage", "current" or "charge": then gain, scale and levels are in A or C instead of V.
+        density: [V, A or C per root hertz] of sensor and first amplifier, None for that of the resistance.
+        sections: that the spec insists on, 0 for none.
     """
 
-    seed: int
+    seed: int | str
     tables: Table = field(default_factory=lambda: {"format": 1})
     unit: str = "A"
     center: float = 0.0
@@ -71,6 +77,10 @@ class Sketch:
     resistance: float = 50.0
     loss: float = 1.0
     ambient: float = 27.0
+    output_kind: str = "voltage"
+    density: float | None = None
+    sections: int = 0
+    files: dict[str, str] = field(default_factory=dict)
 
     @property
     def omega(self) -> float:
@@ -90,8 +100,13 @@ class Sketch:
         """
         thermal = 4 * BOLTZMANN * (self.ambient + ZERO_CELSIUS) * self.resistance
         sections = 2e-9 * (self.center / self.bandwidth) ** 2 / self.gain
-        density = thermal + 3e-9**2 + (2e-12 * self.resistance) ** 2 + sections**2
-        return math.sqrt(density * 1.57 * self.bandwidth)
+        own = thermal + 3e-9**2 + (2e-12 * self.resistance) ** 2 if self.density is None else self.density**2
+        return math.sqrt((own + sections**2) * 1.57 * self.bandwidth)
+
+    def level_of(self, voltage: float, frequency: float) -> float:
+        """[V, A or C] rms at the terminals for one farad to a voltage at a frequency [Hz]."""
+        charge = 2 * math.pi * frequency
+        return voltage * {"voltage": charge * self.resistance, "current": charge, "charge": 1.0}[self.output_kind]
 
 
 def written(r: random.Random, value: float, unit: str, digits: int = 3) -> str:
@@ -159,7 +174,7 @@ def target(r: random.Random, s: Sketch) -> None:
         "bandwidth": written(r, s.bandwidth, "Hz"),
         "full_scale": written(r, s.full_scale / s.scale, s.unit, 6),
     }
-    if r.random() < 0.5:
+    if r.random() < 0.5 or s.output_kind != "voltage":
         table["output"] = written(r, s.output, "V")
     else:
         table["gain"] = f"{20 * math.log10(s.gain):.1f} dB" if r.random() < 0.7 else f"{s.gain:.4g}".replace("e+", "e")
@@ -199,6 +214,7 @@ def rejects(r: random.Random, s: Sketch) -> None:
     if r.random() < 0.5:
         return
     sections = r.choice([1, 2, 2, 3])
+    sections = s.sections or sections
     q = s.center / s.bandwidth * math.sqrt(2 ** (1 / sections) - 1)
     found = []
     for ratio in r.sample([0.1, 0.2, 1 / 3, 0.5, 2.0, 3.0, 5.0, 10.0], r.choice([1, 2])):
@@ -237,28 +253,33 @@ def rolloffs(r: random.Random, s: Sketch) -> None:
     found: list[Table] = []
     for _ in range(r.choice([0, 1, 1, 1, 2])):
         kind = r.choice(["high-pass", "low-pass", "loss", "high-pass", "low-pass", "loss", "resonant"])
-        if kind == "loss":
-            part = r.uniform(0.05, 0.5)
-            one: Table = {"at": written(r, s.center, "Hz"), "loss": f"{100 * part:.2g} %"}
-            one["shape"] = r.choice(["high-pass", "low-pass"])
-            s.loss *= 1 - part
-        elif kind == "resonant":
-            q, frequency = r.choice([0.7, 1.5, 3.0]), s.center * r.uniform(0.85, 1.2)
-            one = {"frequency": written(r, frequency, "Hz"), "q": f"{q:g}"}
-            detuning = s.center / frequency - frequency / s.center
-            s.loss /= math.hypot(1, q * detuning)
-        else:
-            order = r.choice([1, 1, 1, 2])
-            ratio = log_uniform(r, 0.1, 1.5)  # of the corner over the centre, or the other way round
-            one = {"corner": written(r, s.center * (ratio if kind == "high-pass" else 1 / ratio), "Hz")}
-            if order != 1:
-                one["order"] = order
-            s.loss /= math.hypot(1, ratio) ** order
-        if r.random() < 0.5:
-            one["tolerance"] = percent(r, 2, 5, 10)
-        found.append({"kind": kind, **one})
+        found.append(one_rolloff(r, s, kind))
     if found:
         s.tables["sensor"]["rolloff"] = found
+
+
+def one_rolloff(r: random.Random, s: Sketch, kind: str) -> Table:
+    """A rolloff of some kind, its loss at the centre put into the sketch."""
+    if kind == "loss":
+        part = r.uniform(0.05, 0.5)
+        one: Table = {"at": written(r, s.center, "Hz"), "loss": f"{100 * part:.2g} %"}
+        one["shape"] = r.choice(["high-pass", "low-pass"])
+        s.loss *= 1 - part
+    elif kind == "resonant":
+        q, frequency = r.choice([0.7, 1.5, 3.0]), s.center * r.uniform(0.85, 1.2)
+        one = {"frequency": written(r, frequency, "Hz"), "q": f"{q:g}"}
+        detuning = s.center / frequency - frequency / s.center
+        s.loss /= math.hypot(1, q * detuning)
+    else:
+        order = r.choice([1, 1, 1, 2])
+        ratio = log_uniform(r, 0.1, 1.5)  # of the corner over the centre, or the other way round
+        one = {"corner": written(r, s.center * (ratio if kind == "high-pass" else 1 / ratio), "Hz")}
+        if order != 1:
+            one["order"] = order
+        s.loss /= math.hypot(1, ratio) ** order
+    if r.random() < 0.5:
+        one["tolerance"] = percent(r, 2, 5, 10)
+    return {"kind": kind, **one}
 
 
 def source_reactances(r: random.Random, s: Sketch) -> None:
@@ -298,7 +319,7 @@ def interference(r: random.Random, s: Sketch) -> None:
         else:
             level = s.full_scale * log_uniform(r, 0.1, 3.0)
             volts = r.choice([1.0, 3.3, 5.0])
-            through = level / volts / (2 * math.pi * frequency * s.resistance)
+            through = level / s.level_of(volts, frequency)
             one |= {"voltage": written(r, volts, "V"), "through": written(r, min(max(through, 1e-15), 1e-11), "F")}
         if kind == "square" and r.random() < 0.7:
             one["rise_time"] = written(r, r.uniform(0.005, 0.2) / frequency, "s")
@@ -372,7 +393,7 @@ def calibration(r: random.Random, s: Sketch) -> None:
     if r.random() < 0.4:
         return
     table: Table = {"trim": r.choice(["gain", "gain+frequency", "none"])}
-    if r.random() < 0.5:
+    if r.random() < 0.5 and s.output_kind == "voltage":
         table |= {"voltage": "50 mV", "resistor": written(r, 50e-3 * s.resistance / s.full_scale, "ohm")}
         table |= {"voltage_tolerance": "0.2 %", "resistor_tolerance": percent(r, 0.1, 1)}
     else:
@@ -416,7 +437,7 @@ def random_spec(seed: int) -> str:
 
 
 def committed_specs() -> list[Path]:
-    """The spec files in tests/specs, by name."""
+    """The spec files in tests/specs, by name: 20 of this file, 40 of tests/specs/wide.py."""
     return sorted(COMMITTED.glob("*.toml"))
 
 
