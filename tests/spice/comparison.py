@@ -11,7 +11,7 @@ import tomllib
 from collections import Counter
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
@@ -21,6 +21,7 @@ from numpy.typing import NDArray
 
 from synth import api
 from synth.errors import SynthError
+from synth.model.chain import Chain
 from tests.specs.wide import sensor_kind
 from tests.support.simulators import Simulator
 from tests.support.specs import committed_specs
@@ -202,6 +203,18 @@ class Makings:
             sensors[sensor_kind(spec.sensor)] += 1
             single += spec.supply.negative is None
         return Makings(topologies, sensors, single)
+
+
+def with_grounded_reference(chain: Chain) -> Chain:
+    """The same chain with every mid-rail tied to ground: the ideal reference."""
+    kept = tuple(s for s in chain.stages if s.kind != "reference")
+    refs = {ref for s in kept for ref in s.parts}
+    parts = tuple(
+        replace(p, nodes=tuple("0" if n.startswith("ref") else n for n in p.nodes))
+        for p in chain.parts
+        if p.ref in refs
+    )
+    return replace(chain, stages=kept, parts=parts)
 
 
 def numbers(document: object, path: str = "") -> dict[str, float]:

@@ -12,6 +12,7 @@ import synth
 from synth import api, circuit
 from synth.model.chain import Chain
 from synth.planning.reference import SHARE
+from tests.spice.comparison import with_grounded_reference
 from tests.support.simulators import SIMULATORS, Simulator
 
 CENTER = 40e3
@@ -40,18 +41,6 @@ pytestmark = pytest.mark.spice
 @pytest.fixture(scope="module")
 def made() -> synth.Design:
     return synth.design(synth.parse_spec(SPEC))
-
-
-def with_grounded_reference(chain: Chain) -> Chain:
-    """The same chain with every mid-rail tied to ground: the ideal reference."""
-    kept = tuple(s for s in chain.stages if s.kind != "reference")
-    refs = {ref for s in kept for ref in s.parts}
-    parts = tuple(
-        replace(p, nodes=tuple("0" if n.startswith("ref") else n for n in p.nodes))
-        for p in chain.parts
-        if p.ref in refs
-    )
-    return replace(chain, stages=kept, parts=parts)
 
 
 def with_bare_divider(chain: Chain) -> Chain:
