@@ -17,6 +17,7 @@ import tempfile
 import tomllib
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -37,6 +38,7 @@ from tests.spice.comparison import (
     Makings,
     array_of,
     folder_differences,
+    processes,
     read_json,
     with_grounded_reference,
 )
@@ -123,12 +125,18 @@ def simulators(root: Path, ambient: float | None = None) -> Iterator[Entry]:
     where = f"demo and {len(folders) - 1} random specs" + ("" if ambient is None else f", ambient {ambient:g} degC")
     run = "simulators" if ambient is None else "hot"
     for simulator in SIMULATORS:
-        found = Differences.largest(folder_differences(simulator, folder) for folder in folders)
+        with processes() as pool:
+            found = Differences.largest(pool.map(partial(named_differences, simulator.name), folders))
         note = f"{where}; {found.points} points within 80 dB of the peak"
         title = simulator.name + ("" if ambient is None else f" at {ambient:g} degC")
         yield Entry(f"gain against {title}", run, AT_MOST, GAIN_DB, found.gain_db, "dB", note)
         yield Entry(f"phase against {title}", run, AT_MOST, PHASE_DEG, found.phase_deg, "degree", note)
         yield Entry(f"noise density against {title}", run, AT_MOST, 100 * NOISE_SHARE, 100 * found.noise, "%", note)
+
+
+def named_differences(name: str, folder: Path) -> Differences:
+    """A folder's design.json against the simulator of a name."""
+    return folder_differences(next(one for one in SIMULATORS if one.name == name), folder)
 
 
 def hot(root: Path) -> Iterator[Entry]:
@@ -139,6 +147,7 @@ def hot(root: Path) -> Iterator[Entry]:
 def designed(root: Path) -> Iterator[Entry]:
     """How many of the committed specs give a design, and of what kinds."""
     designs = Designs(root)
+    designs.made()
     folders = [folder for spec in committed_specs() if (folder := designs.folder(spec)) is not None]
     met = sum(all(r["met"] is not False for r in read_json(folder)["requirements"]) for folder in folders)
     note = f"of {len(committed_specs())}: {met} meet all that is judged (exit 0), {len(folders) - met} not (exit 1)"

@@ -6,12 +6,15 @@ design.json is read with plain json: nothing of the package stands between the f
 from __future__ import annotations
 
 import json
+import multiprocessing
 import time
 import tomllib
 from collections import Counter
 from collections.abc import Iterable, Iterator
+from concurrent.futures import ProcessPoolExecutor
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -91,8 +94,15 @@ class Designs:
         api.save_design(api.design(asked, self.builds if spec == DEMO else self.others), target)
 
     def made(self, ambient: float | None = None) -> list[Path]:
-        """The folders of all specs that give a design."""
+        """The folders of all specs that give a design, made by as many processes as there are processors."""
+        with processes() as pool:
+            list(pool.map(partial(self.folder, ambient=ambient), all_specs()))
         return [folder for spec in all_specs() if (folder := self.folder(spec, ambient)) is not None]
+
+
+def processes() -> ProcessPoolExecutor:
+    """Processes that share the work of a long run."""
+    return ProcessPoolExecutor(mp_context=multiprocessing.get_context("spawn"))
 
 
 @contextmanager
