@@ -51,10 +51,10 @@ class Node:
         for key in self.table:
             if key not in known:
                 near = difflib.get_close_matches(key, known, n=1)
-                hint = f"did you mean {near[0]}?" if near else f"known: {', '.join(known)}"
+                hint = f"did you mean {near[0]}" if near else f"known: {', '.join(known)}"
                 shown = show(key)
                 where = f"{self.path}: " if self.path else ""
-                raise FolderError(f"{self.source}: {where}the key {shown} is not known; {hint} Else remove it")
+                raise FolderError(f"{self.source}: {where}the key {shown} is not known; {hint}; else remove it")
 
     def get(self, key: str) -> object:
         """The value of a key that has to be there."""

@@ -71,6 +71,11 @@ def _stages_problem(chain: Chain) -> str:
         if stage.name in names:
             return f"stages[{k}].name = {show(stage.name)}: another stage has it; give each its own"
         names.add(stage.name)
+    for k, part in enumerate(chain.parts):
+        if part.stage not in names:
+            return f"parts[{k}].stage = {show(part.stage)}: no such stage among the stages; {_known(names)}"
+        if not any(part.ref in stage.parts for stage in chain.stages if stage.name == part.stage):
+            return f"parts[{k}].ref = {show(part.ref)}: its stage does not list it; add it there or remove the part"
     return ""
 
 

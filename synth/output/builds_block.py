@@ -20,7 +20,8 @@ def build_lines(record: DesignRecord) -> list[str]:
     for one in builds.yields:
         causes = [f"{ascii_line(item)} {percent_text(share)}" for item, share in one.causes if share >= _LEAST_SHARE]
         spread = f", spread by {', '.join(causes[:_CAUSES])}" if causes else ""
-        trimmed = "" if one.counted else " as built, trimmed later"
+        untold = "trimmed later" if builds.trim == "gain trimmed" else "not counted: no accuracy is asked"
+        trimmed = "" if one.counted else f" as built, {untold}"
         lines += wrap(f"{100 * one.share:.4g} %{trimmed}{spread}", f"{GAP}{one.name:<{width}}{GAP}")
     return lines
 

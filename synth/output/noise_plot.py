@@ -22,7 +22,7 @@ from synth.output.figure import (
     styled,
     svg_bytes,
 )
-from synth.output.text import percent_text
+from synth.output.text import level_text, percent_text
 from synth.quantity import format_si
 
 if TYPE_CHECKING:
@@ -47,7 +47,7 @@ def noise_figure(record: DesignRecord) -> Figure:
     density_in = format_si(noise.input_density_at_center, unit, 3)
     subtitle = (
         f"output noise in band {inband} rms, overall {overall}; at the input {density_in}/rtHz; "
-        f"smallest reading {noise.smallest_reading_snr_db:.1f} dB above it"
+        f"smallest reading {level_text(noise.smallest_reading_snr_db)} it"
     )
     figure = new_figure(record.spec.title, subtitle, 11.0, 4.8)
     density = add_panel(figure, 0.85, 5.6, "total density")

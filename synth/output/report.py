@@ -8,7 +8,17 @@ from synth.output.builds_block import build_lines
 from synth.output.layout_block import layout_lines
 from synth.output.requirement_table import requirement_table, verdict_text
 from synth.output.stage_blocks import stage_lines
-from synth.output.text import GAP, align_units, ascii_line, heading, percent_text, quantity_text, table, wrap
+from synth.output.text import (
+    GAP,
+    align_units,
+    ascii_line,
+    heading,
+    level_text,
+    percent_text,
+    quantity_text,
+    table,
+    wrap,
+)
 from synth.spec import Target
 
 __all__ = ["asked_text", "report_text", "requirement_table", "stage_lines", "verdict_text"]
@@ -80,7 +90,7 @@ def _noise_lines(record: DesignRecord) -> list[str]:
     density = quantity_text(noise.input_density_at_center, f"{unit}/rtHz", 3)
     inband, overall = quantity_text(noise.inband_rms, "V", 3), quantity_text(noise.output_rms, "V", 3)
     output = f"output {inband} rms in band, {overall} overall"
-    ratio = f"smallest reading {noise.smallest_reading_snr_db:.1f} dB above it"
+    ratio = f"smallest reading {level_text(noise.smallest_reading_snr_db)} it"
     lines = wrap(f"{output}; input {density} at the centre; {ratio}", GAP)
     top = noise.contributors[:_CONTRIBUTORS]
     if not top:

@@ -143,6 +143,15 @@ def quantity_text(value: float | None, unit: str, digits: int = 4) -> str:
     return ascii_line(f"{number} {unit}")
 
 
+def level_text(decibels: float) -> str:
+    """How far one level stands from another, in words.
+
+    >>> level_text(20.0), level_text(-3.04)
+    ('20.0 dB above', '3.0 dB below')
+    """
+    return f"{abs(decibels):.1f} dB {'above' if decibels >= 0 else 'below'}"
+
+
 def percent_text(share: float) -> str:
     """A share of a whole as '12 %', '<1 %' where it would round to nothing.
 

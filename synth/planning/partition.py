@@ -17,6 +17,7 @@ from synth.spec import Spec
 
 MOST_GAIN_STAGES = 5
 RESERVE_DB = 2.0  # of noise, for all that stands behind the first amplifier
+ALTERNATIVES = 3  # amplifiers beside the quietest, for each count
 LOW_GAIN = 2.0  # a chain that needs less than this takes it back in its sections
 
 
@@ -31,6 +32,8 @@ class Partition:
 
 def partitions(spec: Spec, op_amps: tuple[OpAmp, ...], gain: float, attenuation: float) -> tuple[Partition, ...]:
     """Equal gain stages, fewest first; the quietest amplifier that carries each count stands in every stage.
+
+    After them the same counts with the next amplifiers, for a chain that the first ones fail.
 
     A count whose first amplifier alone is too noisy for the spec is left out, as long as any count is not.
 
@@ -49,15 +52,17 @@ def partitions(spec: Spec, op_amps: tuple[OpAmp, ...], gain: float, attenuation:
         return (Partition((LOW_GAIN,), (_carrying(first, LOW_GAIN, spec).op_amp,), gain / LOW_GAIN),)
     allowed = noise_allowance(spec, attenuation, first[0].noise)
     found: list[tuple[float, Partition]] = []
+    others: list[tuple[float, Partition]] = []
     for count in range(1, MOST_GAIN_STAGES + 1):
         each = gain ** (1 / count)
         fitting = [fit for fit in first if fit.op_amp.minimum_noise_gain <= each <= fit.largest_gain]
-        if fitting:
-            found.append((fitting[0].noise, Partition((each,) * count, (fitting[0].op_amp,) * count, 1.0)))
+        splits = [(fit.noise, Partition((each,) * count, (fit.op_amp,) * count, 1.0)) for fit in fitting]
+        found += splits[:1]
+        others += splits[1 : 1 + ALTERNATIVES]
     if not found:
         most = max(fit.largest_gain for fit in first) ** MOST_GAIN_STAGES
         raise InfeasibleError(_too_much_gain(spec, gain, most))
-    quiet = tuple(split for noise, split in found if noise <= allowed)
+    quiet = tuple(split for noise, split in (*found, *others) if noise <= allowed)
     return quiet or (min(found, key=lambda row: row[0])[1],)
 
 

@@ -24,13 +24,16 @@ from synth.quantity import format_si
 from synth.spec import Spec
 from synth.topology.place import Stocks
 from synth.verification import relative_margin, verify
-from synth.verification.cautions import cautions
 
 MOST_SECTIONS = 6
 KIND_LETTERS = {"gain": "G", "pre-emphasis": "P", "bandpass": "B"}
 QUICK_BUILDS = 2500  # drawn for each candidate
 WORTHWHILE = 0.01  # of yield, that two more sections should bring
-MOST_JUDGED = 8  # candidates built in full before the best of them is taken
+SPLIT_CURES = {
+    *("signal to noise", "phase margin", "input range", "output swing", "slew rate", "output current", "slowest decay")
+}
+MOST_SPLITS = 5  # of the gain, tried for one proposal
+MOST_JUDGED = 10  # candidates built in full before the best of them is taken
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,6 +45,7 @@ class Plan:
     family: str
     order: int
     candidates: tuple[Candidate, ...]
+    notes: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,6 +59,7 @@ class _Built:
     proposal: _Proposal
     chain: Chain
     verdict: Verification
+    notes: tuple[str, ...]
 
     def missed(self) -> set[str]:
         return {r.name for r in self.verdict.requirements if r.met is False}
@@ -94,8 +99,7 @@ def plan(spec: Spec, op_amps: tuple[OpAmp, ...], stocks: Stocks, builds: int = 0
     if not search.built:
         raise search.failure or _no_proposal(spec, search.lost)
     chosen = _choose(search.built, search.lost)
-    said = chosen.verification.cautions
-    notes = said[: len(said) - len(cautions(spec, chosen.chain))]
+    notes = chosen.notes
     verdict = verify(chosen.chain, spec, builds, seed, layout=True)
     notes = (*remedies(chosen.chain, spec, verdict, seed), *notes)
     return replace(chosen, verification=replace(verdict, cautions=(*notes, *verdict.cautions)))
@@ -114,12 +118,12 @@ class _Search:
     failure: InfeasibleError | None = None
 
     def attempt(self, proposal: _Proposal) -> None:
-        """Build and judge a proposal; other splits of the gain only where noise is missed."""
+        """Build and judge a proposal; other splits of the gain only where another amplifier or count may cure it."""
         screened = _screen(self.shop.spec, proposal)
         if screened is not None:
             self.lost.append(screened)
             return
-        for split in self.splits:
+        for split in self.splits[:MOST_SPLITS]:
             try:
                 made = build_on_target(self.shop, proposal.family, proposal.pairs, split)
                 verdict = verify(made.chain, self.shop.spec, self.builds, self.seed)
@@ -127,10 +131,9 @@ class _Search:
                 refusal = error if isinstance(error, InfeasibleError) else InfeasibleError(str(error))
                 self.failure = self.failure or refusal
                 self.lost.append(Candidate(_describe(proposal, None), False, "cannot be built", str(error)))
-                return
-            verdict = replace(verdict, cautions=(*made.notes, *verdict.cautions))
-            self.built.append(_Built(proposal, made.chain, verdict))
-            if "signal to noise" not in self.built[-1].missed():
+                continue
+            self.built.append(_Built(proposal, made.chain, verdict, made.notes))
+            if not self.built[-1].missed() & SPLIT_CURES or len(self.built) >= MOST_JUDGED:
                 return
 
     def spreads_more(self, _family: str, count: int) -> bool:
@@ -155,7 +158,8 @@ def _choose(built: list[_Built], lost: list[Candidate]) -> Plan:
     chosen = built[order[0]]
     others = [_candidate(built[k], False) for k in range(len(built)) if k != order[0]]
     candidates = (_candidate(chosen, True), *others, *lost)
-    return Plan(chosen.chain, chosen.verdict, chosen.proposal.family, len(chosen.proposal.pairs), candidates)
+    family, count = chosen.proposal.family, len(chosen.proposal.pairs)
+    return Plan(chosen.chain, chosen.verdict, family, count, candidates, chosen.notes)
 
 
 def _candidate(entry: _Built, chosen: bool) -> Candidate:

@@ -19,6 +19,9 @@ from synth.topology import FIRST_STAGES, Topology, non_inverting, shelving
 from synth.topology.place import Draft, Stocks, Surroundings, place
 
 FEEDBACK_RANGE = (1e3, 22e3)  # [ohm] light for the amplifier, small against its input capacitance
+SMALLEST_FEEDBACK = 220.0  # [ohm] that any amplifier drives at these levels
+PHASE_COST = 0.2  # [rad] that the input's pole may take at the loop's crossover
+FIRST_LEG_ROOM = 1.2  # how far the trim may raise the first stage's ground leg: it is in the signal's noise
 GROUND_LEG_RANGE = (22.0, 4.7e3)  # [ohm]
 WINDOW = 1.6  # how far the ground leg may move for a better ratio
 COUPLING_RATIO = 100.0  # the coupling corner lies this far below the centre
@@ -44,12 +47,25 @@ def gain_draft(
     """
     bias = bias_resistor(target.gain, op_amp, stocks, source_resistance)
     wanted = _resistor_ratio(target.gain, op_amp, frequency)
-    quiet = op_amp.voltage_noise**2 / (4 * BOLTZMANN * (ambient + ZERO_CELSIUS))
-    leg = min(max(quiet, FEEDBACK_RANGE[0] / wanted, GROUND_LEG_RANGE[0]), FEEDBACK_RANGE[1] / wanted)
-    leg = min(max(leg, GROUND_LEG_RANGE[0]), GROUND_LEG_RANGE[1])
+    leg = ground_leg(wanted, target.gain, op_amp, ambient)
     rg, rf = _ratio_pair(wanted, leg, stocks)
     chosen = {"CC": coupling_capacitor(bias, stocks, frequency), "RB": bias, "RG": rg, "RF": rf}
     return Draft(non_inverting.TOPOLOGY, target, op_amp, chosen)
+
+
+def ground_leg(ratio: float, gain: float, op_amp: OpAmp, ambient: float) -> float:
+    """Ground leg RG [ohm]: quiet beside the amplifier, RF easy to drive, the input's pole beyond the crossover.
+
+    RF parallel RG with the capacitance on the inverting input takes phase from the loop at its crossover GBW/gain.
+    """
+    quiet = op_amp.voltage_noise**2 / (4 * BOLTZMANN * (ambient + ZERO_CELSIUS))
+    leg = min(max(quiet, FEEDBACK_RANGE[0] / ratio, GROUND_LEG_RANGE[0]), FEEDBACK_RANGE[1] / ratio)
+    capacitance = (
+        op_amp.input_capacitance_differential + op_amp.input_capacitance_common + op_amp.stray_inverting_to_ground
+    )
+    parallel = PHASE_COST / (2 * math.pi * op_amp.gain_bandwidth / gain * capacitance)
+    leg = min(leg, max(parallel * (1 + ratio) / ratio, SMALLEST_FEEDBACK / ratio))
+    return min(max(leg, GROUND_LEG_RANGE[0]), GROUND_LEG_RANGE[1])
 
 
 def coupling_capacitor(bias: float, stocks: Stocks, frequency: float) -> float:
@@ -175,18 +191,22 @@ def trim_chain(
             best, best_error = tuple(trimmed), error
         if best_error < GOOD:
             break
-        first, second = _levers(trimmed, variants, stocks, gain / reached)
+        first, second = _levers(trimmed, drafts, variants, stocks, gain / reached)
         for lever, k in zip((first, second), _best_pair(first.factors, second.factors, gain / reached), strict=True):
             trimmed[lever.index] = replace(trimmed[lever.index], values=lever.values[k])
     return best
 
 
 def _levers(
-    drafts: Sequence[Draft], variants: Mapping[int, Sequence[Variant]], stocks: Stocks, factor: float
+    drafts: Sequence[Draft],
+    planned: Sequence[Draft],
+    variants: Mapping[int, Sequence[Variant]],
+    stocks: Stocks,
+    factor: float,
 ) -> tuple[_Lever, _Lever]:
     """The two that are moved together: gain stages from the last, then sections from the last."""
     gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain" and d.topology.name not in FIRST_STAGES]
-    found = [_gain_lever(drafts, k, factor if k == gains[-1] else 1.0, stocks) for k in gains[:-3:-1]]
+    found = [_gain_lever(drafts, planned, k, factor if k == gains[-1] else 1.0, stocks) for k in gains[:-3:-1]]
     found += [_section_lever(drafts, k, variants[k]) for k in sorted(variants, reverse=True)[: 2 - len(found)]]
     if not found:
         raise InfeasibleError("the chain has no gain stage to trim; ask for more gain")
@@ -201,12 +221,15 @@ def _section_lever(drafts: Sequence[Draft], index: int, variants: Sequence[Varia
     return _Lever(index, options, np.array([v.gain / current for v in variants]))
 
 
-def _gain_lever(drafts: Sequence[Draft], index: int, factor: float, stocks: Stocks) -> _Lever:
-    """Stocked pairs near the present ground leg whose ratio lies within a few steps of the wanted one."""
-    now = drafts[index].values
+def _gain_lever(
+    drafts: Sequence[Draft], planned: Sequence[Draft], index: int, factor: float, stocks: Stocks
+) -> _Lever:
+    """Stocked pairs near the planned ground leg whose ratio lies within a few steps of the wanted one."""
+    now, leg = drafts[index].values, planned[index].values["RG"]
     grid = stocks.resistors.values
     wanted = max((1 + now["RF"] / now["RG"]) * factor - 1, 0.05)
-    legs = grid[(grid >= now["RG"] / WINDOW) & (grid <= now["RG"] * WINDOW)]
+    raised = FIRST_LEG_ROOM if index == 0 else WINDOW
+    legs = grid[(grid >= leg / WINDOW) & (grid <= leg * raised)]
     nearest = np.searchsorted(grid, legs * wanted)
     columns = np.clip(nearest[:, None] + np.arange(-STEPS, STEPS + 1), 0, grid.size - 1)
     rg, rf = np.repeat(legs, columns.shape[1]), grid[columns].ravel()

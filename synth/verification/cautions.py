@@ -6,6 +6,7 @@ import math
 import re
 
 from synth.model.chain import Chain
+from synth.model.judgement import Requirement
 from synth.quantity import format_si
 from synth.spec import Spec
 
@@ -20,7 +21,9 @@ HAZARDS = (
 )
 
 
-def cautions(spec: Spec, chain: Chain, drawn: bool = False) -> tuple[str, ...]:
+def cautions(
+    spec: Spec, chain: Chain, requirements: tuple[Requirement, ...] = (), drawn: bool = False
+) -> tuple[str, ...]:
     """Hazards that the spec shows, and what the figures leave open."""
     found = [text for pattern, text in HAZARDS if re.search(pattern, spec.title, re.IGNORECASE)]
     total = _voltage_gain_db(spec)
@@ -40,6 +43,7 @@ def cautions(spec: Spec, chain: Chain, drawn: bool = False) -> tuple[str, ...]:
                     f"{stage.name}: the spread of {stage.op_amp}'s gain-bandwidth alone moves its frequency "
                     f"{100 * shift:.2g} %, of {100 * allowed:.2g} % allowed"
                 )
+    found += _about_level(spec, chain, requirements)
     if drawn:
         found.append(
             "builds spread output level, band, rejects and ripple; noise, delay and margins are of the nominal build"
@@ -47,6 +51,24 @@ def cautions(spec: Spec, chain: Chain, drawn: bool = False) -> tuple[str, ...]:
     else:
         found.append("figures are of the nominal build; tolerances are not in them")
     return tuple(found)
+
+
+def _about_level(spec: Spec, chain: Chain, requirements: tuple[Requirement, ...]) -> list[str]:
+    """Where the gain is trimmed, and over which range."""
+    found = []
+    level = next((r for r in requirements if r.name == "output at full scale"), None)
+    gains = [stage for stage in chain.stages if stage.topology.startswith("non-inverting")]
+    if level is not None and level.low is not None and level.high is not None and gains:
+        parts = [chain.part(ref) for ref in gains[-1].parts]
+        feedback = next(part for part in parts if part.role == "gain, feedback")
+        wanted = spec.full_scale_output
+        low, high = (100 * (wanted / x - 1) for x in (level.high, level.low))
+        spread = f"{format_si(level.low, 'V')} to {format_si(level.high, 'V')}"
+        found.append(
+            f"gain as built spreads from {spread} at full scale: trim it, or record a factor; {feedback.ref} in "
+            f"{gains[-1].name} would move by about {low:+.2g} to {high:+.2g} %"
+        )
+    return found
 
 
 def _voltage_gain_db(spec: Spec) -> float:

@@ -18,6 +18,7 @@ from synth.verification.figures import noise_table, realized, response_table
 from synth.verification.headroom import Excursion, excursions, output_noise
 from synth.verification.requirements import derived, judged, not_judged
 
+DROWNED = 6.0  # [dB] over the noise: a smallest reading that stands no higher is told
 MARGIN_SPAN = (1e-3, 1e5)  # of the centre: where loop gains are searched for their unity crossings
 
 
@@ -46,9 +47,13 @@ def verify(chain: Chain, spec: Spec, builds: int = 0, seed: int = 0, layout: boo
     model = sensor_figures(chain.sensor, chain.center_frequency)
     pairs = match_pairs(chain, band, model)
     stages = _stage_results(chain, network, pairs, found, margins, spec.target.full_scale)
+    said = cautions(spec, chain, requirements, drawn is not None)
+    if spec.target.signal_to_noise is None and noise.smallest_reading_snr_db < DROWNED:
+        found_at = f"{noise.smallest_reading_snr_db:+.1f} dB from the noise in the band"
+        said = (f"the smallest reading stands {found_at}: it drowns; ask target.signal_to_noise", *said)
     demands = layout_demands(chain, network, spec) if layout else ()
     return Verification(
-        table, noise, band, model, stages, requirements, cautions(spec, chain, drawn is not None), drawn, demands
+        table, noise, band, model, stages, requirements, said, drawn, demands
     )
 
 

@@ -87,8 +87,10 @@ def derived(found: tuple[Excursion, ...], margins: tuple[circuit.Margin, ...], b
     yield limited("input range", "V", range_.input_peak, at_most=range_.input_allowed, note=f"peak at {range_.ref}")
     worst = min(margins, key=lambda m: m.phase_margin)
     yield limited("phase margin", "deg", worst.phase_margin, at_least=PHASE_MARGIN, note=f"of {worst.ref}")
-    fastest_growth = float(circuit.growth(np.array(band.poles), band.center_frequency).max())
-    yield limited("slowest decay", "1/s", 0.0 - fastest_growth, at_least=0.0, note="of all poles; negative grows")
+    growth = circuit.growth(np.array(band.poles), band.center_frequency)
+    moving = growth[growth != 0]  # a charge held somewhere neither grows nor decays
+    slowest = 0.0 - float(moving.max()) if moving.size else 0.0
+    yield limited("slowest decay", "1/s", slowest, at_least=0.0, note="of all poles; negative grows")
 
 
 def not_judged(spec: Spec, drawn: bool = False) -> Iterator[Requirement]:
@@ -109,7 +111,7 @@ def not_judged(spec: Spec, drawn: bool = False) -> Iterator[Requirement]:
         ("detector", "", spec.detector is not None, "the chain is judged up to its output"),
         ("calibration", "", spec.calibration is not None, "figures are before calibration"),
         ("resonator", "", spec.resonator is not None, "drive level and pulling"),
-        ("sensor scale", "", _has_scale_spread(spec), "its tolerance and temperature coefficient"),
+        ("sensor scale", "", _has_scale_spread(spec) and not drawn, "its tolerance and temperature coefficient"),
         ("preference", "", spec.choose != Choose(), "what is preferred, and how long is searched"),
     ]
     for name, unit, present, note in sections:
