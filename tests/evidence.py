@@ -336,12 +336,14 @@ def write(entries: Iterable[Entry], path: Path = EVIDENCE) -> None:
 
 
 def record(names: Sequence[str], path: Path = EVIDENCE) -> list[Entry]:
-    """Rerun some of the runs and put their entries in place of the old ones; returns the new ones."""
+    """Rerun some of the runs and put their entries in place of the old ones, run by run; returns the new ones."""
     today = datetime.datetime.now(tz=datetime.UTC).date().isoformat()
+    kept, found = read(path) if path.exists() else [], []
     with tempfile.TemporaryDirectory(prefix="synth-evidence-") as name:
-        found = [replace(entry, date=today) for run in names for entry in RUNS[run](Path(name))]
-    kept = [entry for entry in read(path) if entry.run not in names] if path.exists() else []
-    write([*kept, *found], path)
+        for run in names:
+            found += [replace(entry, date=today) for entry in RUNS[run](Path(name))]
+            kept = [entry for entry in kept if entry.run != run]
+            write([*kept, *found], path)
     return found
 
 
