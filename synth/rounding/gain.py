@@ -63,7 +63,8 @@ def ground_leg(ratio: float, gain: float, op_amp: OpAmp, ambient: float) -> floa
     capacitance = (
         op_amp.input_capacitance_differential + op_amp.input_capacitance_common + op_amp.stray_inverting_to_ground
     )
-    parallel = PHASE_COST / (2 * math.pi * op_amp.gain_bandwidth / gain * capacitance)
+    pole = 2 * math.pi * op_amp.gain_bandwidth / gain * capacitance
+    parallel = PHASE_COST / pole if pole > 0 else math.inf
     leg = min(leg, max(parallel * (1 + ratio) / ratio, SMALLEST_FEEDBACK / ratio))
     return min(max(leg, GROUND_LEG_RANGE[0]), GROUND_LEG_RANGE[1])
 

@@ -204,8 +204,14 @@ def test_a_chain_that_does_not_fit_together_is_not_written() -> None:
     sensor = replace(chain.sensor, resistance=50.0)
     with pytest.raises(FolderError, match="the chain's sensor is not that of the spec; put it into the spec"):
         encode(replace(record, chain=replace(chain, sensor=sensor)))
-    with pytest.raises(FolderError, match=r"stages \['gain 1'\] have the results of \['gain 1', 'bandpass 1'\]"):
+    with pytest.raises(FolderError, match=r'parts\[5\]\.stage = "bandpass 1": no such stage among the stages'):
         encode(replace(record, chain=replace(chain, stages=chain.stages[:1])))
+    short = replace(chain.stages[0], parts=chain.stages[0].parts[1:])
+    with pytest.raises(FolderError, match=r"its stage does not list it; add it there or remove the part"):
+        encode(replace(record, chain=replace(chain, stages=(short, *chain.stages[1:]))))
+    verdict = replace(record.verification, stages=record.verification.stages[:1])
+    with pytest.raises(FolderError, match=r"stages \['gain 1', 'bandpass 1'\] have the results of \['gain 1'\]"):
+        encode(replace(record, verification=verdict))
     models = {"AMP1": make_model("AMP2")}
     with pytest.raises(FolderError, match="models: the figures of AMP1 are those of AMP2"):
         encode(replace(record, chain=replace(chain, models=models)))

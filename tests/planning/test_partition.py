@@ -64,7 +64,8 @@ def test_every_order_once(gains: int, sections: int) -> None:
 def test_equal_gains_make_the_whole(gain: float, spec: Spec, catalog: tuple[OpAmp, ...]) -> None:
     found = partitions(spec, catalog, gain, 1.0)
     counts = [len(split.gains) for split in found]
-    assert counts == sorted(set(counts))
+    assert list(dict.fromkeys(counts)) == sorted(set(counts))  # fewest first, other amplifiers after
+    assert len({(len(s.gains), s.op_amps[0].type) for s in found}) == len(found)
     for split in found:
         assert math.prod(split.gains) * split.section_gain == pytest.approx(gain, rel=1e-12)
         assert len(split.gains) == len(split.op_amps) <= MOST_GAIN_STAGES

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 
 import numpy as np
@@ -112,3 +113,26 @@ def test_chain_without_a_gain_stage(section: Section) -> None:
 def test_chain_gain_is_the_response_at_the_centre(section: Section) -> None:
     chain = place([section.draft], STOCKS, around(CENTER, SENSOR))
     assert chain_gain(chain) == pytest.approx(abs(circuit.response(circuit.build_network(chain), [CENTER])[0]))
+
+
+def test_the_first_stage_keeps_its_quiet_ground_leg(section: Section) -> None:
+    """The trim moves ground legs about the planned ones; the first, which is in the signal's noise, hardly upwards."""
+    planned = [gain_draft(StageTarget(g), MODEL, STOCKS, CENTER, 27.0, 25.0) for g in (30.0, 30.0)]
+    for factor in (0.9, 0.97, 1.0, 1.03, 1.1):
+        drafts = [planned[0], planned[1], section.draft]
+        surroundings = around(CENTER, SENSOR, 10e3)
+        wanted = factor * 900.0 * SENSOR.scale
+        trimmed = trim_chain(drafts, {2: section.variants}, STOCKS, surroundings, wanted)
+        assert trimmed[0].values["RG"] <= 1.25 * planned[0].values["RG"]
+        assert trimmed[1].values["RG"] <= 1.65 * planned[1].values["RG"]
+
+
+def test_the_input_s_pole_stays_beyond_the_crossover() -> None:
+    """2 pi (GBW/gain) (RF parallel RG) Cin below a fifth, but for what drives RF: a fast type at a low gain."""
+    fast = op_amp(gain_bandwidth=100e6, voltage_noise=5e-9)
+    draft = gain_draft(StageTarget(2.0), fast, STOCKS, CENTER, 27.0, 25.0)
+    values = draft.values
+    capacitance = fast.input_capacitance_differential + fast.input_capacitance_common + fast.stray_inverting_to_ground
+    parallel = values["RF"] * values["RG"] / (values["RF"] + values["RG"])
+    pole = 2 * math.pi * 100e6 / 2 * parallel * capacitance
+    assert pole < 0.25 or values["RF"] < 300
