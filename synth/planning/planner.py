@@ -33,6 +33,7 @@ SPLIT_CURES = {
     *("signal to noise", "phase margin", "input range", "output swing", "slew rate", "output current", "slowest decay")
 }
 MOST_SPLITS = 5  # of the gain, tried for one proposal
+MOST_FAILED = 6  # builds that fail before one succeeds: no more are tried
 MOST_JUDGED = 10  # candidates built in full before the best of them is taken
 
 
@@ -116,6 +117,7 @@ class _Search:
     built: list[_Built] = field(default_factory=list)
     lost: list[Candidate] = field(default_factory=list)
     failure: InfeasibleError | None = None
+    failed: int = 0
 
     def attempt(self, proposal: _Proposal) -> None:
         """Build and judge a proposal; other splits of the gain only where another amplifier or count may cure it."""
@@ -130,6 +132,7 @@ class _Search:
             except (InfeasibleError, CircuitError) as error:
                 refusal = error if isinstance(error, InfeasibleError) else InfeasibleError(str(error))
                 self.failure = self.failure or refusal
+                self.failed += 1
                 self.lost.append(Candidate(_describe(proposal, None), False, "cannot be built", str(error)))
                 continue
             self.built.append(_Built(proposal, made.chain, verdict, made.notes))
@@ -143,7 +146,7 @@ class _Search:
     def is_over(self) -> bool:
         """All is met, enough was judged, or more sections would not raise the yield that alone is missed."""
         if not self.built:
-            return False
+            return self.failed >= MOST_FAILED
         last = self.built[-1]
         if last.verdict.all_met or len(self.built) >= MOST_JUDGED:
             return True
