@@ -169,7 +169,9 @@ def batch(root: Path) -> Iterator[Entry]:
     folders = Designs(root).made()
     with processes() as pool:
         worst = max(pool.map(batch_error, folders))
-    note = f"{len(folders)} chains, 100 builds each, every tenth solved at 262 frequencies, down to 80 dB below its peak"
+    note = (
+        f"{len(folders)} chains, 100 builds each, every tenth solved at 262 frequencies, down to 80 dB below its peak"
+    )
     yield Entry("batch against direct solution", "batch", AT_MOST, BATCH_ERROR, worst, "", note)
 
 
