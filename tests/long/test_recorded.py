@@ -7,13 +7,13 @@ import math
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 import pytest
 
-from tests.evidence import AT_LEAST, AT_MOST, EVIDENCE, RUNS, Entry, read, record, write
+from tests.evidence import AT_LEAST, AT_MOST, EVIDENCE, RUNS, Entry, read, record, section_errors, write
 
-MISSED: dict[str, str] = {
-    "synth design, quick": "the search over section circuits and orders takes longer than the imports three times",
-    "rounding, Q": "a section may end up 1 % from its Q once the chain's gain is trimmed",
+MISSED: dict[str, str] = {  # name of an entry -> why it is known to miss its target
+    "rounding, gain at the centre": "random_36: a shelf is all that is left to trim behind a transimpedance stage",
 }
 
 
@@ -69,3 +69,30 @@ def test_a_margin_that_does_not_follow_is_noticed(tmp_path: Path) -> None:
     file.write_text(file.read_text().replace("measured = 0.125", "measured = 0.6"))
     with pytest.raises(ValueError, match="does not follow"):
         read(file)
+
+
+def test_equal_sections_are_taken_by_the_mean_of_their_poles() -> None:
+    """Coupling parts the poles of equal sections to either side; a pair of its own and the sensor's stay apart."""
+    pole = 2 * math.pi * 1e4 * complex(-1 / 20, math.sqrt(1 - 1 / 400))
+    apart, third, own = 400 + 900j, 1.2 * pole, 2 * math.pi * 1.05e4 * complex(-1 / 8, math.sqrt(1 - 1 / 64))
+    upper = np.array([pole + apart, own, third, pole - apart])
+    sensor = [[own.real, own.imag], [own.real, -own.imag], [-5e4, 0.0]]
+    targets = [(1e4, 10.0), (1.2e4, 10.0), (1e4, 10.0)]
+    document = {
+        "stages": [
+            {"name": f"bandpass {k + 1}", "target": {"center_frequency": f0, "q": q}}
+            for k, (f0, q) in enumerate(targets)
+        ],
+        "sensor_model": {"poles": sensor},
+        "parts": [
+            {"kind": kind, "stage": f"bandpass {k + 1}", "tolerance": 0.01}
+            for kind in ("resistor", "capacitor")
+            for k in range(3)
+        ],
+    }
+    found = section_errors(document, np.concatenate([upper, upper.conj(), [-1e6]]))
+    assert len(found) == 3
+    for frequency_error, q_error, limit in found:
+        assert frequency_error < 1e-9
+        assert q_error < 1e-9
+        assert limit == pytest.approx(10 * 0.5 * math.sqrt(4 / 3) * 0.01, rel=1e-9)
