@@ -14,12 +14,14 @@ from synth.verification import nominal_band
 
 BENDS = 4
 ON_TARGET = 0.25  # of the tolerance of bandwidth or centre: nearer is not tried
+RIPPLE_RESERVE = 0.8  # of the ripple allowed: rounding and the sensor take the rest
 MOST_RIPPLE = 1.0  # [dB] of a Chebyshev chain, however much is allowed
 
 
 def proposed_ripple(spec: Spec) -> float:
     """Ripple [dB] that a Chebyshev chain is given."""
-    return min(spec.target.ripple or DEFAULT_RIPPLE, MOST_RIPPLE)
+    allowed = spec.target.ripple
+    return DEFAULT_RIPPLE if allowed is None else min(RIPPLE_RESERVE * allowed, MOST_RIPPLE)
 
 
 def build_on_target(shop: Workshop, family: str, pairs: Sequence[PolePair], split: Partition) -> BuiltChain:

@@ -16,6 +16,7 @@ from synth.rounding import chain_gain
 from synth.spec import Spec
 from synth.topology.place import Draft, Reference, Stocks, Surroundings, place
 from synth.topology.reference import BUFFERED, DIVIDER, FOLLOWER
+from synth.verification import MARGIN_SPAN, PHASE_MARGIN
 
 SHARE = 0.1  # of the accuracy, that the reference may take
 DIVIDER_RESISTANCE = 10e3  # [ohm] each half
@@ -38,11 +39,16 @@ def choose_references(
     accuracy = spec.target.accuracy if spec.target.accuracy is not None else DEFAULT_ACCURACY
     ideal = chain_gain(place(drafts, stocks, around))
     best = math.inf
+    shaky: tuple[Reference, ...] = ()
     for references in _options(spec, drafts, op_amps, stocks):
         ratio, stable = _effect(replace(around, references=references), drafts, stocks, ideal)
         if stable and abs(ratio - 1) <= SHARE * accuracy:
-            return references
+            if _follows(replace(around, references=references), drafts, stocks):
+                return references
+            shaky = shaky or references
         best = min(best, abs(ratio - 1)) if stable else best
+    if shaky:
+        return shaky  # the judge says what margin is missing
     found = "none of them is stable" if math.isinf(best) else f"the best costs {100 * best:.2g} % of gain"
     raise InfeasibleError(
         f"{spec.source}: supply.negative left out: no mid-rail reference keeps its loop within "
@@ -95,6 +101,15 @@ def _effect(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks, ideal
         circuit.poles(circuit.build_network(chain), chain.center_frequency), chain.center_frequency
     )
     return chain_gain(chain) / ideal, stable
+
+
+def _follows(around: Surroundings, drafts: Sequence[Draft], stocks: Stocks) -> bool:
+    """Whether the followers of the references keep their phase margin."""
+    chain = place(drafts, stocks, around)
+    refs = {ref for stage in chain.stages if stage.kind == "reference" for ref in stage.parts}
+    low, high = (chain.center_frequency * span for span in MARGIN_SPAN)
+    margins = circuit.phase_margins(circuit.build_network(chain), low, high)
+    return all(margin.phase_margin >= PHASE_MARGIN for margin in margins if margin.ref in refs)
 
 
 def reference_caution(drafts: Sequence[Draft], stocks: Stocks, around: Surroundings) -> str:

@@ -31,6 +31,7 @@ USUAL_BIAS, USUAL_RATIO = 100e3, 50.0  # [ohm], and of the source: larger bias r
 SOURCE_RATIO = 10.0  # least ratio of bias resistor to source resistance
 STEPS = 2  # of the series either side of the wanted feedback resistor
 TRIMS = 4
+FAIR = 1e-3  # of the gain: what is left after two gain stages, before a section is moved instead of one
 GOOD = 1e-4  # of the gain: no better pair is looked for
 DAMPED: dict[str, Topology] = {non_inverting.TOPOLOGY.name: non_inverting.DAMPED, **shelving.DAMPED}
 
@@ -185,14 +186,15 @@ def trim_chain(
     """
     trimmed = list(drafts)
     best, best_error = tuple(trimmed), math.inf
-    for _ in range(TRIMS):
+    for attempt in range(2 * TRIMS):
         reached = chain_gain(place(trimmed, stocks, around))
         error = abs(reached / gain - 1)
         if error < best_error:
             best, best_error = tuple(trimmed), error
-        if best_error < GOOD:
+        if best_error < (GOOD if attempt < TRIMS else FAIR):
             break
-        first, second = _levers(trimmed, drafts, variants, stocks, gain / reached)
+        most = 2 if attempt < TRIMS else 1  # gain stages, before a section is moved as well
+        first, second = _levers(trimmed, drafts, variants, stocks, gain / reached, most)
         for lever, k in zip((first, second), _best_pair(first.factors, second.factors, gain / reached), strict=True):
             trimmed[lever.index] = replace(trimmed[lever.index], values=lever.values[k])
     return best
@@ -204,10 +206,12 @@ def _levers(
     variants: Mapping[int, Sequence[Variant]],
     stocks: Stocks,
     factor: float,
+    most: int,
 ) -> tuple[_Lever, _Lever]:
-    """The two that are moved together: gain stages from the last, then sections from the last."""
+    """The two that are moved together: at most so many gain stages from the last, then sections from the last."""
     gains = [k for k, d in enumerate(drafts) if d.topology.kind == "gain" and d.topology.name not in FIRST_STAGES]
-    found = [_gain_lever(drafts, planned, k, factor if k == gains[-1] else 1.0, stocks) for k in gains[:-3:-1]]
+    moved = gains[: -most - 1 : -1]
+    found = [_gain_lever(drafts, planned, k, factor if k == gains[-1] else 1.0, stocks) for k in moved]
     found += [_section_lever(drafts, k, variants[k]) for k in sorted(variants, reverse=True)[: 2 - len(found)]]
     if not found:
         raise InfeasibleError("the chain has no gain stage to trim; ask for more gain")
