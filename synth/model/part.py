@@ -115,3 +115,8 @@ class OpAmp:
     stray_output_to_inverting: float
     stray_inverting_to_ground: float
     packages: tuple[tuple[int, str], ...]
+
+    @property
+    def input_capacitance(self) -> float:
+        """Differential and common-mode capacitance of an input whose twin is grounded [F]."""
+        return self.input_capacitance_differential + self.input_capacitance_common

@@ -149,7 +149,7 @@ def suits_sections(op_amp: OpAmp) -> bool:
 def section_margin(op_amp: OpAmp, topology: SectionTopology) -> float:
     """Phase margin [degree] that an amplifier would have in a section, by the circuit's fitted loss."""
     own = phase_margin(op_amp.gain_bandwidth, op_amp.dc_gain, op_amp.second_pole, 1.0)
-    capacitance = op_amp.input_capacitance_differential + op_amp.input_capacitance_common
+    capacitance = op_amp.input_capacitance
     fixed, each = topology.margin_loss
     return own - fixed - each * op_amp.gain_bandwidth * 1e-6 * capacitance * 1e12
 

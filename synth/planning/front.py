@@ -82,7 +82,7 @@ def _quietest(spec: Spec, op_amps: tuple[OpAmp, ...]) -> list[OpAmp]:
     f = spec.target.center_frequency
 
     def noise(op_amp: OpAmp) -> float:
-        own = op_amp.input_capacitance_differential + op_amp.input_capacitance_common
+        own = op_amp.input_capacitance
         capacitance = own + (spec.sensor.capacitance or 0.0)
         admittance = math.hypot(2 * math.pi * f * capacitance, 1 / (spec.sensor.resistance or math.inf))
         white = op_amp.current_noise**2 * (1 + op_amp.current_noise_corner / f) + (op_amp.current_noise_slope * f) ** 2

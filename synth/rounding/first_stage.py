@@ -13,13 +13,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from synth import circuit
-from synth.circuit.network import BOLTZMANN, ZERO_CELSIUS, FloatArray
+from synth.circuit.network import FloatArray
 from synth.circuit.sensor_figures import GAIN_UNITS, sensor_response, stage_gain
 from synth.errors import InfeasibleError
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.parts.eseries import values_between
 from synth.quantity import format_si
+from synth.rounding.quiet import quiet_resistance
 from synth.spec import Sensor
 from synth.topology import charge_amplifier, inverting, transimpedance
 from synth.topology.place import Draft, Stocks, Surroundings, place
@@ -67,7 +68,7 @@ class Site:
     def input_capacitance(self) -> float:
         """All capacitance on the inverting input but the feedback's [F]."""
         a = self.op_amp
-        own = a.input_capacitance_differential + a.input_capacitance_common + a.stray_inverting_to_ground
+        own = a.input_capacitance + a.stray_inverting_to_ground
         return own + (self.sensor.capacitance or 0.0)
 
     @property
@@ -163,7 +164,7 @@ def _charge(target: StageTarget, site: Site) -> tuple[Maker, FloatArray]:
 
 def _isolation(site: Site) -> float:
     """RS [ohm]: as quiet as the amplifier, and its corner with the source a long way above the centre."""
-    quiet = site.op_amp.voltage_noise**2 / (4 * BOLTZMANN * (site.ambient + ZERO_CELSIUS))
+    quiet = quiet_resistance(site.op_amp, site.ambient)
     most = min(max(quiet, ISOLATION_RANGE[0]), ISOLATION_RANGE[1])
     if site.sensor.capacitance is not None:
         most = min(most, 1 / (2 * math.pi * CORNER_RATIO * site.frequency * site.sensor.capacitance))
@@ -187,7 +188,7 @@ def inverting_draft(
     """
     largest = min(LARGEST_FEEDBACK, DC_SHARE / op_amp.bias_current, float(stocks.resistors.values[-1]))
     least = max(INPUT_RANGE[0], SOURCE_RATIO * source_impedance)
-    quiet = op_amp.voltage_noise**2 / (4 * BOLTZMANN * (ambient + ZERO_CELSIUS))
+    quiet = quiet_resistance(op_amp, ambient)
     ratio = inverting.resistor_ratio(target.gain, frequency, op_amp.gain_bandwidth, op_amp.dc_gain)
     if ratio is None:
         raise InfeasibleError(

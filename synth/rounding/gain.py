@@ -9,11 +9,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from synth import circuit
-from synth.circuit.network import BOLTZMANN, ZERO_CELSIUS, FloatArray
+from synth.circuit.network import FloatArray
 from synth.errors import InfeasibleError
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.quantity import format_si
+from synth.rounding.quiet import quiet_resistance
 from synth.rounding.section import Variant
 from synth.topology import FIRST_STAGES, Topology, non_inverting, shelving
 from synth.topology.place import Draft, Stocks, Surroundings, place
@@ -59,11 +60,9 @@ def ground_leg(ratio: float, gain: float, op_amp: OpAmp, ambient: float) -> floa
 
     RF parallel RG with the capacitance on the inverting input takes phase from the loop at its crossover GBW/gain.
     """
-    quiet = op_amp.voltage_noise**2 / (4 * BOLTZMANN * (ambient + ZERO_CELSIUS))
+    quiet = quiet_resistance(op_amp, ambient)
     leg = min(max(quiet, FEEDBACK_RANGE[0] / ratio, GROUND_LEG_RANGE[0]), FEEDBACK_RANGE[1] / ratio)
-    capacitance = (
-        op_amp.input_capacitance_differential + op_amp.input_capacitance_common + op_amp.stray_inverting_to_ground
-    )
+    capacitance = op_amp.input_capacitance + op_amp.stray_inverting_to_ground
     pole = 2 * math.pi * op_amp.gain_bandwidth / gain * capacitance
     parallel = PHASE_COST / pole if pole > 0 else math.inf
     leg = min(leg, max(parallel * (1 + ratio) / ratio, SMALLEST_FEEDBACK / ratio))

@@ -16,12 +16,13 @@ from numpy.typing import NDArray
 
 from synth import circuit
 from synth.circuit.compiled import Program, compile_network, run
-from synth.circuit.network import BOLTZMANN, ZERO_CELSIUS, FloatArray
+from synth.circuit.network import FloatArray
 from synth.errors import InfeasibleError
 from synth.model.chain import Chain, StageTarget
 from synth.model.part import OpAmp
 from synth.quantity import format_si
 from synth.rounding.gain import bias_resistor, coupling_capacitor
+from synth.rounding.quiet import quiet_resistance
 from synth.rounding.section import MOST_VARIANTS, Variant
 from synth.spec import Sensor
 from synth.topology import shelving
@@ -301,7 +302,7 @@ def _discomfort(values: Mapping[str, FloatArray], bench: _Bench) -> NDArray[np.i
     amplifier; resistors in the strays' reach or tiny; capacitors large against strays.
     """
     op_amp, kind = bench.op_amp, bench.aim.kind
-    quiet = op_amp.voltage_noise**2 / (4 * BOLTZMANN * (bench.aim.ambient + ZERO_CELSIUS))
+    quiet = quiet_resistance(op_amp, bench.aim.ambient)
     resistors = [values[key] for key in shelving.RESISTORS[kind]]
     capacitor = values[shelving.CAPACITOR[kind]]
     leg = values["RG"]

@@ -57,7 +57,7 @@ def damper(inductance: float, op_amp: OpAmp) -> tuple[float, float]:
     The source's inductance resonates with the input capacitance Ci far above the signal, where the input of a
     feedback amplifier can be a negative resistance; sqrt(L/Ci) behind ten times Ci holds it (common practice).
     """
-    input_capacitance = op_amp.input_capacitance_differential + op_amp.input_capacitance_common
+    input_capacitance = op_amp.input_capacitance
     return math.sqrt(inductance / input_capacitance), 10 * input_capacitance
 
 
